@@ -1,0 +1,91 @@
+"""The command line: ``halfturn``, also ``python -m app``.
+
+Without a subcommand it serves. Whatever is slow to import is imported by the command that needs it.
+"""
+
+from __future__ import annotations
+
+import argparse
+import os
+import sys
+from collections.abc import Sequence
+from pathlib import Path
+
+from app.errors import InputError
+from app.fitting import add_fit_command
+from app.version import VERSION
+
+DEFAULT_PORT = 8010
+EXIT_DONE = 0
+EXIT_BAD_INPUT = 2
+
+
+def main(arguments: Sequence[str] | None = None) -> int:
+    """Run one command and return its exit status."""
+    options = build_parser().parse_args(arguments)
+    try:
+        status: int = options.run(options)
+    except InputError as error:
+        print(f"halfturn: {error}", *_list_problems(error), sep="\n", file=sys.stderr)
+        return EXIT_BAD_INPUT
+    return status
+
+
+def _list_problems(error: InputError) -> list[str]:
+    """Every bad row of a table, where the error tells of several."""
+    problems = error.detail.get("problems", []) if isinstance(error.detail, dict) else []
+    return [
+        f"  line {problem['line']}{', ' + problem['column'] if problem.get('column') else ''}: {problem['reason']}"
+        for problem in problems
+        if "line" in problem
+    ]
+
+
+def build_parser() -> argparse.ArgumentParser:
+    """The whole command line; each subcommand sets ``run``, a function from its options to an exit status."""
+    parser = argparse.ArgumentParser(
+        prog="halfturn",
+        description="Tensor properties of single crystals. Without a command: serve the pages and open the browser.",
+    )
+    parser.add_argument("--version", action="version", version=f"Halfturn {VERSION}")
+    serving = parser.add_argument_group("serving")
+    serving.add_argument(
+        "--port", type=_port, default=DEFAULT_PORT, metavar="N", help=f"0 takes any free one; default {DEFAULT_PORT}"
+    )
+    serving.add_argument("--no-browser", action="store_true", help="do not open the browser")
+    serving.add_argument(
+        "--data", type=Path, metavar="DIR", help=f"where stored work is kept; default {user_data_folder()}"
+    )
+    parser.set_defaults(run=run_serve)
+    add_fit_command(parser.add_subparsers(title="commands", metavar="COMMAND"))
+    return parser
+
+
+def run_serve(options: argparse.Namespace) -> int:
+    """Serve the pages and the calls until stopped."""
+    data_dir: Path = (options.data or user_data_folder()).expanduser().absolute()
+    if data_dir.exists() and not data_dir.is_dir():
+        raise InputError(f"{data_dir} is not a folder.", field="--data", hint="Name a folder; it is made when needed.")
+
+    from app.web.serving import serve
+
+    serve(options.port, data_dir, open_browser=not options.no_browser)
+    return EXIT_DONE
+
+
+def user_data_folder() -> Path:
+    """Where this platform keeps a user's data for this tool; not made yet."""
+    home = Path.home()
+    if sys.platform == "win32":
+        return Path(os.environ.get("LOCALAPPDATA") or home / "AppData" / "Local") / "Halfturn"
+    if sys.platform == "darwin":
+        return home / "Library" / "Application Support" / "Halfturn"
+    # The XDG convention: a path that is not absolute is to be ignored.
+    stated = Path(os.environ.get("XDG_DATA_HOME", ""))
+    return (stated if stated.is_absolute() else home / ".local" / "share") / "halfturn"
+
+
+def _port(text: str) -> int:
+    if not (text.isascii() and text.isdigit() and int(text) <= 65535):
+        raise argparse.ArgumentTypeError(f"{text!r} is not a port: give a whole number from 0 to 65535")
+    return int(text)

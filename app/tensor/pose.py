@@ -1,0 +1,264 @@
+"""Where the specimen stands in the crystal: the six ways to say it, and back to matrix, Bunge angles and quaternion.
+
+C has the specimen axes x y z, written in the crystal frame, as its rows: v_specimen = C v_crystal, and a tensor goes
+over as C T Cᵀ (passive: the crystal stays, the axes of description change). An axis with an angle, and a quaternion,
+turn the crystal frame's axes by the right-hand rule onto x y z, so C is the transpose of that turn.
+Bunge angles: H.-J. Bunge, Texture Analysis in Materials Science (1982), section 2.1.2:
+v_crystal = g v_specimen, g = Z(φ2) X(Φ) Z(φ1) with passive matrices, so C = gᵀ.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+from typing import Any, Final
+
+import numpy as np
+import numpy.typing as npt
+from scipy.spatial.transform import Rotation
+
+from app.crystal.crystal import Crystal
+from app.crystal.direction import read_direction
+from app.errors import InputError, located
+
+FloatArray = npt.NDArray[np.float64]
+
+AXIS_LETTERS: Final = ("x", "y", "z")
+MATRIX_TOLERANCE: Final = 1e-6
+QUATERNION_TOLERANCE: Final = 1e-3
+PARALLEL_LIMIT: Final = 1e-9
+"""Sine of the angle below which two directions count as parallel."""
+
+_SHAPES: Final = (
+    '{"matrix": C}, {"exact": ["z", direction], "toward": ["x", direction]}, {"axis": direction, "angle": degrees}, '
+    '{"quaternion": [w, x, y, z]}, {"bunge": [phi1, PHI, phi2]} or '
+    '{"from": direction, "tilt": degrees, "toward": direction, "x": direction}'
+)
+
+
+@dataclass(frozen=True)
+class Pose:
+    """A specimen frame.
+
+    Attributes:
+        matrix: C, shape (3, 3), proper and orthonormal, specimen axes in the crystal frame as rows.
+    """
+
+    matrix: FloatArray
+
+    @property
+    def bunge(self) -> list[float]:
+        """phi1 and phi2 in 0 to 360, PHI in 0 to 180 degrees; where PHI is 0 or 180, phi2 is 0."""
+        g = self.matrix.T
+        tilt = float(np.arctan2(np.hypot(g[2, 0], g[2, 1]), g[2, 2]))
+        if np.hypot(g[2, 0], g[2, 1]) < 1e-9:
+            first, second = float(np.arctan2(g[0, 1], g[0, 0])), 0.0
+        else:
+            first, second = float(np.arctan2(g[2, 0], -g[2, 1])), float(np.arctan2(g[0, 2], g[1, 2]))
+        turned = [float(np.rad2deg(angle)) % 360.0 for angle in (first, second)]
+        return [turned[0], float(np.rad2deg(tilt)), turned[1]]
+
+    @property
+    def quaternion(self) -> list[float]:
+        """W x y z with w not negative, of the turn that takes x1 x2 x3 onto x y z."""
+        x, y, z, w = Rotation.from_matrix(self.matrix.T).as_quat(canonical=True)
+        return [float(value) for value in (w, x, y, z)]
+
+
+IDENTITY: Final = Pose(np.eye(3))
+
+
+def read_pose(given: Any, crystal: Crystal) -> Pose:
+    """A Pose from what a caller gives: one of the six shapes of the interface, or None for the identity.
+
+    Raises:
+        InputError: an unknown or mixed shape, a wrong number, or directions that do not determine the pose.
+    """
+    if given is None:
+        return IDENTITY
+    if isinstance(given, Pose):
+        return given
+    if not isinstance(given, Mapping):
+        raise InputError("A pose is an object.", hint=f"Give {_SHAPES}.")
+    keys = {key for key, value in given.items() if value is not None}
+    if keys == {"matrix"}:
+        return pose_from_matrix(given["matrix"])
+    if keys == {"exact", "toward"}:
+        exact, exact_direction = _read_assignment(given["exact"], "exact", crystal)
+        near, near_direction = _read_assignment(given["toward"], "toward", crystal)
+        return pose_from_axes(exact, exact_direction, near, near_direction)
+    if keys == {"axis", "angle"}:
+        axis = _resolve(given["axis"], "axis", crystal)
+        return pose_from_axis_angle(axis, _read_number(given["angle"], "angle"))
+    if keys == {"quaternion"}:
+        return pose_from_quaternion(_read_numbers(given["quaternion"], 4, "quaternion"))
+    if keys == {"bunge"}:
+        return pose_from_bunge(_read_numbers(given["bunge"], 3, "bunge"))
+    if keys in ({"from", "tilt", "toward"}, {"from", "tilt", "toward", "x"}):
+        start = _resolve(given["from"], "from", crystal)
+        toward = _resolve(given["toward"], "toward", crystal)
+        near_x = _resolve(given["x"], "x", crystal) if "x" in keys else None
+        return pose_from_tilt(start, _read_number(given["tilt"], "tilt"), toward, near_x)
+    raise InputError(
+        f"A pose cannot be read from the keys {', '.join(sorted(map(str, keys))) or 'of an empty object'}.",
+        hint=f"Give exactly one of {_SHAPES}.",
+    )
+
+
+def pose_from_matrix(matrix: npt.ArrayLike) -> Pose:
+    """From C itself, orthonormal and proper to 1e-6, then made exact (the nearest rotation)."""
+    rows = _read_matrix(matrix)
+    if np.max(np.abs(rows @ rows.T - np.eye(3))) > MATRIX_TOLERANCE:
+        raise InputError(
+            "The rows of the pose's matrix are not orthonormal to 1e-6.",
+            field="matrix",
+            hint="Give the specimen axes x, y, z as rows of unit length at right angles, with enough digits.",
+        )
+    if np.linalg.det(rows) < 0:
+        raise InputError(
+            "The pose's matrix is left-handed: its determinant is −1.",
+            field="matrix",
+            hint="Reverse one axis; a specimen frame is right-handed.",
+        )
+    left, _, right = np.linalg.svd(rows)
+    return Pose(left @ right)
+
+
+def pose_from_axes(exact: int, exact_direction: FloatArray, near: int, near_direction: FloatArray) -> Pose:
+    """Specimen axis number ``exact`` along one unit vector, axis ``near`` as near to the other as it can be."""
+    if exact == near:
+        raise InputError(
+            f"The axis {AXIS_LETTERS[exact]} is put in two places.", field="toward", hint="Name two different axes."
+        )
+    across = near_direction - exact_direction * (exact_direction @ near_direction)
+    if np.linalg.norm(across) < PARALLEL_LIMIT:
+        raise InputError(
+            f"The directions for {AXIS_LETTERS[exact]} and {AXIS_LETTERS[near]} are parallel, so the turn about "
+            f"{AXIS_LETTERS[exact]} is open.",
+            field="toward",
+            hint="Give a second direction that is not parallel to the first.",
+        )
+    rows = np.zeros((3, 3))
+    rows[exact] = exact_direction
+    rows[near] = across / np.linalg.norm(across)
+    third = 3 - exact - near
+    rows[third] = np.cross(rows[(third + 1) % 3], rows[(third + 2) % 3])
+    return Pose(rows)
+
+
+def pose_from_axis_angle(axis: FloatArray, angle: float) -> Pose:
+    """The crystal frame's axes turned about a unit vector by ``angle`` degrees, right-handed, become x y z."""
+    turned: FloatArray = Rotation.from_rotvec(np.deg2rad(angle) * axis).as_matrix().T
+    return Pose(turned)
+
+
+def pose_from_quaternion(quaternion: FloatArray) -> Pose:
+    """The turn of ``pose_from_axis_angle`` as w x y z, of norm 1 to 1e-3."""
+    size = float(np.linalg.norm(quaternion))
+    if abs(size - 1.0) > QUATERNION_TOLERANCE:
+        raise InputError(
+            f"The quaternion has norm {size:.6g}, not 1.",
+            field="quaternion",
+            hint="Give w, x, y, z with w² + x² + y² + z² = 1, to 0.001.",
+        )
+    turned: FloatArray = Rotation.from_quat(quaternion, scalar_first=True).as_matrix().T
+    return Pose(turned)
+
+
+def pose_from_bunge(angles: FloatArray) -> Pose:
+    """phi1, PHI, phi2 in degrees, as in the texture literature: C = gᵀ."""
+    # Turning the axes by phi1 about z, PHI about the new x and phi2 about the new z takes x y z onto x1 x2 x3, so
+    # the columns of this active turn are the crystal axes in the specimen frame, which is C.
+    turned: FloatArray = Rotation.from_euler("ZXZ", angles, degrees=True).as_matrix()
+    return Pose(turned)
+
+
+def pose_from_tilt(start: FloatArray, tilt: float, toward: FloatArray, near_x: FloatArray | None = None) -> Pose:
+    """Z is ``start`` tilted by ``tilt`` degrees toward ``toward``; x is near ``near_x``, else near ``toward``."""
+    across = toward - start * (start @ toward)
+    if np.linalg.norm(across) < PARALLEL_LIMIT:
+        raise InputError(
+            "The direction to tilt toward is parallel to the one to tilt from.",
+            field="toward",
+            hint="Give a direction at an angle to the first.",
+        )
+    across = across / np.linalg.norm(across)
+    angle = np.deg2rad(tilt)
+    z = np.cos(angle) * start + np.sin(angle) * across
+    wanted = toward if near_x is None else near_x
+    try:
+        return pose_from_axes(2, z / np.linalg.norm(z), 0, wanted)
+    except InputError:
+        raise InputError(
+            "The direction for x is parallel to z, so the turn about z is open.",
+            field="x",
+            hint="Give as x a direction that is not parallel to z.",
+        ) from None
+
+
+def _read_assignment(given: Any, field: str, crystal: Crystal) -> tuple[int, FloatArray]:
+    if not isinstance(given, list | tuple) or len(given) != 2 or given[0] not in AXIS_LETTERS:
+        raise InputError(
+            f"“{field}” is a pair: a specimen axis x, y or z, and the direction it is put on.",
+            field=field,
+            hint='For example ["z", "(-2 0 1)"].',
+        )
+    return AXIS_LETTERS.index(given[0]), _resolve(given[1], f"{field}[1]", crystal)
+
+
+def _resolve(given: Any, field: str, crystal: Crystal) -> FloatArray:
+    with located(field):
+        return crystal.resolve(read_direction(given))
+
+
+def _read_number(given: Any, field: str) -> float:
+    if isinstance(given, bool) or not isinstance(given, int | float) or not abs(given) <= 1e9:
+        raise InputError(f"“{field}” is a finite number of degrees.", field=field)
+    return float(given)
+
+
+def _read_numbers(given: Any, count: int, field: str) -> FloatArray:
+    if not isinstance(given, list | tuple | np.ndarray) or len(given) != count:
+        raise InputError(f"“{field}” is a list of {count} numbers.", field=field)
+    return np.array([_read_number(value, f"{field}[{index}]") for index, value in enumerate(given)])
+
+
+def _read_matrix(given: npt.ArrayLike) -> FloatArray:
+    try:
+        matrix = np.array(given, dtype=np.float64)
+    except (TypeError, ValueError):
+        matrix = np.empty(0)
+    if matrix.shape != (3, 3) or not np.all(np.isfinite(matrix)):
+        raise InputError("A matrix is three rows of three finite numbers.", field="matrix")
+    return matrix
+
+
+def resolve_direction(crystal: Crystal, given: Any, pose: Pose) -> FloatArray:
+    """Unit vector in the crystal frame, shape (3,), of any direction; specimen-frame ones by ``pose``."""
+    direction = read_direction(given)
+    if direction.kind != "specimen":
+        return crystal.resolve(direction)
+    values = np.asarray(direction.values)
+    vector = pose.matrix.T @ (values / np.max(np.abs(values)))
+    unit: FloatArray = vector / np.linalg.norm(vector)
+    return unit
+
+
+def resolve_directions(crystal: Crystal, given: Sequence[Any], pose: Pose) -> FloatArray:
+    """Unit vectors in the crystal frame, shape (m, 3), of a list of directions; an error names the wrong one."""
+    vectors = np.zeros((len(given), 3))
+    plain = [index for index, item in enumerate(given) if type(item) is list]
+    if plain:
+        numbers = np.array([given[index] for index in plain], dtype=np.float64)
+        sizes = np.max(np.abs(numbers), axis=1)
+        if not np.all(sizes > 0):
+            index = plain[int(np.argmin(sizes > 0))]
+            raise InputError("A direction cannot be the zero vector.", field=f"[{index}]")
+        scaled = numbers / sizes[:, None]
+        vectors[plain] = scaled / np.linalg.norm(scaled, axis=1, keepdims=True)
+    if len(plain) < len(given):
+        for index, item in enumerate(given):
+            if type(item) is not list:
+                with located(f"[{index}]"):
+                    vectors[index] = resolve_direction(crystal, item, pose)
+    return vectors
