@@ -20,6 +20,7 @@ from scipy.spatial.transform import Rotation
 from app.crystal.crystal import Crystal
 from app.crystal.direction import read_direction
 from app.errors import InputError, located
+from app.tensor.matrix import read_matrix
 
 FloatArray = npt.NDArray[np.float64]
 
@@ -107,7 +108,7 @@ def read_pose(given: Any, crystal: Crystal) -> Pose:
 
 def pose_from_matrix(matrix: npt.ArrayLike) -> Pose:
     """From C itself, orthonormal and proper to 1e-6, then made exact (the nearest rotation)."""
-    rows = _read_matrix(matrix)
+    rows = read_matrix(matrix)
     if np.max(np.abs(rows @ rows.T - np.eye(3))) > MATRIX_TOLERANCE:
         raise InputError(
             "The rows of the pose's matrix are not orthonormal to 1e-6.",
@@ -221,16 +222,6 @@ def _read_numbers(given: Any, count: int, field: str) -> FloatArray:
     if not isinstance(given, list | tuple | np.ndarray) or len(given) != count:
         raise InputError(f"“{field}” is a list of {count} numbers.", field=field)
     return np.array([_read_number(value, f"{field}[{index}]") for index, value in enumerate(given)])
-
-
-def _read_matrix(given: npt.ArrayLike) -> FloatArray:
-    try:
-        matrix = np.array(given, dtype=np.float64)
-    except (TypeError, ValueError):
-        matrix = np.empty(0)
-    if matrix.shape != (3, 3) or not np.all(np.isfinite(matrix)):
-        raise InputError("A matrix is three rows of three finite numbers.", field="matrix")
-    return matrix
 
 
 def resolve_direction(crystal: Crystal, given: Any, pose: Pose) -> FloatArray:

@@ -30,7 +30,7 @@ FloatArray = npt.NDArray[np.float64]
 
 _MERIDIANS: Final = 60
 _LONGEST_STEP: Final = 0.03
-_SHORTEST_STEP: Final = 1e-11
+_SHORTEST_STEP: Final = 1e-12
 _STALLED: Final = 1e-2
 _STEP_LIMIT: Final = 20000
 _TURN_LIMIT: Final = float(np.cos(0.16))
@@ -63,7 +63,7 @@ class _Border:
     weights: FloatArray
 
     def evaluate(self, direction: FloatArray) -> tuple[float, FloatArray]:
-        """f and its gradient across a unit vector (3,)."""
+        """F and its gradient across a unit vector (3,)."""
         once = (self.forms @ direction) @ direction
         values = once @ direction
         weighted = self.weights * values
@@ -72,7 +72,7 @@ class _Border:
         return value, gradient
 
     def measure(self, directions: FloatArray) -> FloatArray:
-        """f of vectors (m, 3), shape (m,)."""
+        """F of vectors (m, 3), shape (m,)."""
         values: FloatArray = self._apply(directions) ** 2 @ self.weights
         return values
 
@@ -324,7 +324,7 @@ def _follow(border: _Border, start: FloatArray) -> tuple[FloatArray, bool]:
 def _cross_over(border: _Border, point: FloatArray, tangent: FloatArray) -> tuple[FloatArray, FloatArray] | None:
     """From the tip of a needle, too sharp to be followed round, to the other flank: its point and tangent."""
     aside = np.cross(point, tangent)
-    widths = np.geomspace(1e-16, 1e-6, 400)
+    widths = np.geomspace(3e-13, 1e-6, 300)
     for side in (1.0, -1.0):
         # Just off the curve f is negative to the left and positive to the right, until the other flank.
         values = np.array([border.evaluate(point + side * width * aside)[0] for width in widths]) * -side

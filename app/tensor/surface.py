@@ -14,6 +14,7 @@ import numpy as np
 import numpy.typing as npt
 
 from app.errors import InputError
+from app.tensor.matrix import read_matrix
 from app.tensor.quadric import ZERO_TOLERANCE, sign_values
 from app.tensor.sheet_mesh import Grid, Patch, build_quadric_patches, build_sphere, build_value_patches, connect_grids
 
@@ -106,21 +107,6 @@ def build_surface(matrix: npt.ArrayLike, surface: SurfaceKind, detail: int = DEF
     if surface == "value":
         return _build_value(principal, int(detail))
     return _build_quadric(principal, int(detail))
-
-
-def read_matrix(matrix: npt.ArrayLike) -> FloatArray:
-    """A matrix checked to be three rows of three finite numbers, none so large that what follows would overflow."""
-    try:
-        cells = np.array(matrix, dtype=np.float64)
-    except (TypeError, ValueError):
-        cells = np.empty(0)
-    if cells.shape != (3, 3) or not np.all(np.isfinite(cells)):
-        raise InputError("A tensor's matrix is three rows of three finite numbers.", field="matrix")
-    if np.max(np.abs(cells)) > LARGEST_CELL:
-        raise InputError(
-            f"A cell beyond {LARGEST_CELL:g} leaves no room for the surface.", field="matrix", hint="Use a larger unit."
-        )
-    return cells
 
 
 def find_scaled_principal(cells: FloatArray) -> ScaledPrincipal:

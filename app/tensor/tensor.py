@@ -13,6 +13,7 @@ from app.errors import InputError
 from app.tensor.estimate import Estimate, build_estimate, check_covariance
 from app.tensor.form import Form, build_form
 from app.tensor.kind import Kind
+from app.tensor.matrix import read_matrix
 
 FloatArray = npt.NDArray[np.float64]
 
@@ -66,7 +67,7 @@ def build_tensor(
             hint=f"The free cells of this crystal and kind are {', '.join(form.labels) or 'none: it vanishes'}.",
         )
     if matrix is not None:
-        cells = _read_matrix(matrix)
+        cells = read_matrix(matrix)
         scale = float(np.max(np.abs(cells))) or 1.0
         obeying = form.project(cells / scale)
         given_size = float(np.linalg.norm(cells / scale))
@@ -78,16 +79,6 @@ def build_tensor(
     checked = None if covariance is None else check_covariance(covariance, form.count)
     estimate = build_estimate(form, values, checked, crystal.frame_sentence, unit)
     return PropertyTensor(form, estimate, values, checked, misfit)
-
-
-def _read_matrix(given: npt.ArrayLike) -> FloatArray:
-    try:
-        matrix = np.array(given, dtype=np.float64)
-    except (TypeError, ValueError):
-        matrix = np.empty(0)
-    if matrix.shape != (3, 3) or not np.all(np.isfinite(matrix)):
-        raise InputError("A tensor's matrix is three rows of three finite numbers.", field="matrix")
-    return matrix
 
 
 def _read_free(free: Mapping[str, float], form: Form) -> FloatArray:
