@@ -5,8 +5,8 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import Literal
 
-Parity = Literal["polar", "axial"]
-Intrinsic = Literal["symmetric", "general", "antisymmetric"]
+from app.tensor.kind import Intrinsic, Parity
+
 SpecimenReading = Literal["along", "rod", "sheet"]
 Source = Literal["common practice", "from memory"]
 

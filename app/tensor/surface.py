@@ -28,7 +28,6 @@ LOWEST_DETAIL: Final = 8
 HIGHEST_DETAIL: Final = 400
 DEFAULT_DETAIL: Final = 60
 
-LARGEST_CELL: Final = 1e300
 
 ROUNDING: Final = 1e-14
 """A symmetric part below this fraction of the largest cell is what rounding left beside an antisymmetric one."""

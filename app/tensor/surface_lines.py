@@ -16,9 +16,9 @@ import numpy.typing as npt
 
 from app.errors import InputError
 from app.tensor.conic import Conic, find_conics
+from app.tensor.matrix import read_matrix
 from app.tensor.quadric import ZERO_TOLERANCE
 from app.tensor.sheet_mesh import spread_circular, spread_hyperbolic
-from app.tensor.matrix import read_matrix
 from app.tensor.surface import SurfaceKind, find_cut, find_scaled_principal
 
 FloatArray = npt.NDArray[np.float64]

@@ -12,14 +12,15 @@ from typing import Annotated, Literal, Self
 from pydantic import Field, StringConstraints, model_validator
 from pydantic_core import PydanticCustomError
 
+from app.crystal.frame import DEFAULT_RULE
+from app.readings.reading import ReadingKind
+from app.tensor.kind import Intrinsic, Parity
 from app.web.parts import Direction, Directions, Number, Part, Pose, SixNumbers, Text, ThreeByThree
 
 MAX_READINGS = 200_000
 MAX_CIF_CHARACTERS = 8 * 1024 * 1024
 MAX_FREE_CELLS = 9
 
-Parity = Literal["polar", "axial"]
-Intrinsic = Literal["symmetric", "general", "antisymmetric"]
 
 # Crystal, tensor, reading ---------------------------------------------------------------------------------------------
 
@@ -33,7 +34,7 @@ class Crystal(Part):
     unique_axis: Literal["a", "b", "c"] | None = Field(
         None, description="for the short monoclinic point-group symbols only; b where it is not given"
     )
-    frame: Text = "x3=c x2=b*"
+    frame: Text = DEFAULT_RULE
 
 
 class TensorKind(Part):
@@ -78,7 +79,7 @@ class TensorWithCovariance(Tensor):
 class Reading(Part):
     """One measured number."""
 
-    kind: Literal["along", "across", "difference", "mean", "rod", "sheet"]
+    kind: ReadingKind
     direction: Direction | None = None
     second: Direction | None = None
     value: Number
