@@ -11,6 +11,7 @@ import logging
 from collections.abc import Sequence
 from typing import Any
 
+import numpy as np
 from fastapi import FastAPI, Request
 from fastapi.exceptions import RequestValidationError
 from starlette.exceptions import HTTPException
@@ -206,6 +207,8 @@ def install(app: FastAPI) -> None:
     app.add_exception_handler(RecursionError, answer_recursion)
     app.add_exception_handler(OverflowError, answer_overflow)
     app.add_exception_handler(FloatingPointError, answer_overflow)
+    # A decomposition fails only on what has left the range of numbers on the way to it.
+    app.add_exception_handler(np.linalg.LinAlgError, answer_overflow)
 
 
 class LastResort:

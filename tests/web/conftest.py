@@ -35,6 +35,7 @@ RAISED: dict[str, Exception] = {
     "store": StoreError("The disk is full."),
     "bad-detail": InputError("The cell is wrong.", field="cell", detail={"cell": [float("nan")]}),
     "overflow": OverflowError("math range error"),
+    "decomposition": np.linalg.LinAlgError("SVD did not converge"),
     "recursion": RecursionError("maximum recursion depth exceeded"),
     "bug": ZeroDivisionError("a defect"),
 }

@@ -34,6 +34,7 @@ def error_of(answer: Any, status: int = 422) -> dict[str, Any]:
         ("store", 503),
         ("bad-detail", 422),
         ("overflow", 422),
+        ("decomposition", 422),
         ("recursion", 422),
     ],
 )
