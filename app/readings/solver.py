@@ -14,6 +14,8 @@ import numpy as np
 import numpy.typing as npt
 from scipy.linalg import qr, solve_triangular
 
+from app.errors import InputError
+
 FloatArray = npt.NDArray[np.float64]
 
 RANK_TOLERANCE: Final = 1e-6
@@ -59,6 +61,12 @@ def solve_least_squares(
     if unknowns == 0 or count == 0:
         empty = np.zeros((unknowns, unknowns))
         return Solution(np.zeros(unknowns), empty, 0, np.inf if unknowns else 1.0, np.eye(unknowns))
+    if not (np.all(np.isfinite(design)) and np.all(np.isfinite(observed))):
+        raise InputError(
+            "The readings and their standard deviations leave the range of numbers when they are weighed.",
+            field="readings",
+            hint="Look for a value or a sigma that is extremely large or small.",
+        )
     order = np.argsort(-np.max(np.abs(design), axis=1), kind="stable")
     orthogonal, triangle, pivots = qr(design[order], mode="economic", pivoting=True)
     parts = np.linalg.svd(triangle)

@@ -30,6 +30,9 @@ _CORRELATION_NOISE: Final = 1e-14
 
 _ROUNDING: Final = 1e-12
 
+_NEGLIGIBLE: Final = 1e-100
+"""A standard deviation below this part of the largest cell counts as none: its square would leave the range."""
+
 
 @dataclass(frozen=True)
 class Deviation:
@@ -98,8 +101,9 @@ def build_deviation(crystal: Crystal, tensor: PropertyTensor) -> Deviation:
     spreads, unit = np.zeros((0, 3, 3)), 0.0
     if tensor.free_covariance is not None and form.count:
         spreads, unit = _find_spreads(basis, tensor.free_covariance)
-    if unit == 0.0:
-        unit = float(np.max(np.abs(whole))) or 1.0
+    largest = float(np.max(np.abs(whole)))
+    if unit <= _NEGLIGIBLE * largest:
+        spreads, unit = np.zeros((0, 3, 3)), largest or 1.0
     scaled = whole / unit
     matrix = _remove_trace(scaled)
     size = float(np.linalg.norm(scaled))
@@ -159,7 +163,7 @@ def _find_axes(crystal: Crystal, matrix: FloatArray, size: float, spreads: Float
         if alone and np.all(off <= limits):
             exact = next((name for name in named if np.linalg.norm(np.cross(name, axis)) < 1e-6), axis)
             found.append(exact * np.sign(exact[int(np.argmax(np.abs(exact)))]))
-    found.sort(key=lambda axis: tuple(-np.round(np.abs(axis), 9)))
+    found.sort(key=lambda axis: [-round(abs(float(part)), 9) for part in axis])
     return np.array(found).reshape(-1, 3)
 
 

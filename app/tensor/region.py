@@ -14,19 +14,23 @@ from typing import Final
 
 import numpy as np
 import numpy.typing as npt
-from scipy.special import chdtri
+from scipy.special import gammaincinv
 
 from app.crystal.crystal import Crystal
 from app.errors import InputError
 from app.tensor.deviation import LOST, Deviation, build_deviation
 from app.tensor.region_border import trace_border
-from app.tensor.region_lines import Curve, CurveKind, trace_cone, trace_exact, trace_family, trace_plane, trace_triple
+from app.tensor.region_lines import trace_cone, trace_exact, trace_family, trace_plane, trace_triple
+from app.tensor.region_shapes import Curve, CurveKind
 from app.tensor.tensor import PropertyTensor
 
 FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
 
 DEFAULT_LEVEL: Final = 0.95
+
+_TRACED: Final = 3e10
+"""Standard deviations in a tensor without symmetry beyond which its areas are points: they are below 1e-10 radians."""
 
 _RESOLVED: Final = 1e13
 """Where ‖A‖ is more than this many standard deviations, rounding of A is what blurs the axes: they count as exact."""
@@ -137,6 +141,8 @@ def _trace(deviation: Deviation, single: float, double: float) -> list[Curve] | 
         return trace_plane(deviation, single, double)
     if deviation.cone is not None:
         return trace_cone(deviation, deviation.cone, single, double)
+    if deviation.size > _TRACED:
+        return trace_exact(deviation.matrix, deviation.size)
     border = trace_border(deviation, double)
     return None if border is None else [("area", curve) for curve in border]
 
@@ -145,7 +151,7 @@ def _find_bounds(level: float) -> FloatArray:
     """Quantiles of χ² at the level for 0, 1 and 2 degrees of freedom."""
     if not 0.0 < level < 1.0:
         raise InputError("A level of confidence lies between 0 and 1.", field="level", hint="For example 0.95.")
-    return np.array([0.0, chdtri(1, 1.0 - level), chdtri(2, 1.0 - level)])
+    return np.array([0.0, 2.0 * gammaincinv(0.5, level), 2.0 * gammaincinv(1.0, level)])
 
 
 def _normalise(directions: npt.ArrayLike) -> FloatArray:
@@ -181,10 +187,9 @@ def _measure(deviation: Deviation, directions: FloatArray, bounds: FloatArray) -
     in_kept = np.sum(effects * kept, axis=1)
     in_lost = np.where(rank == 0, np.linalg.norm(effects, axis=1), np.abs(_cross(effects, kept)))
     forbidden = (rank < 2) & (in_lost > LOST * deviation.size)
-    with np.errstate(over="ignore"):
-        numerators = np.sum(_cross(effects[:, None, :], spreads) ** 2, axis=1)
-        double = numerators / np.where(rank == 2, determinant, 1.0)
-        single = in_kept**2 / np.where(rank == 1, larger, 1.0)
+    numerators = np.sum(_cross(effects[:, None, :], spreads) ** 2, axis=1)
+    double = numerators / np.where(rank == 2, determinant, 1.0)
+    single = in_kept**2 / np.where(rank == 1, larger, 1.0)
     chi2 = np.choose(rank, [np.zeros(len(normals)), single, double])
     return DirectionTest(np.where(forbidden, np.nan, chi2), rank, bounds[rank])
 

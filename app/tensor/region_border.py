@@ -1,8 +1,6 @@
 """The border of the area of possible principal axes where symmetry confines it to no line.
 
-By the formula of Binet and Cauchy χ²(n) = Σ_a P_a² / Σ_{a<b} Q_ab² with the cubic forms P_a = det[n, An, D_a n] and
-Q_ab = det[n, D_a n, D_b n] (A and D_a as in ``app.tensor.deviation``). The border is therefore the curve of degree
-six f = Σ P_a² − bound Σ Q_ab² = 0, and the area is f ≤ 0. Two facts make finding all of it safe:
+The border is the curve of degree six f = 0 of ``app.tensor.sextic``. Two facts make finding all of it safe:
 
 - every connected part of the area holds a principal axis of A itself: the tensors that the data allow form a ball,
   and each axis moves continuously over it. So every outer border is met on the way out from an axis;
@@ -15,8 +13,6 @@ and K. Georg, Introduction to Numerical Continuation Methods (2003), chapters 2 
 
 from __future__ import annotations
 
-from dataclasses import dataclass
-from itertools import permutations
 from typing import Final
 
 import numpy as np
@@ -25,70 +21,20 @@ from scipy.optimize import brentq
 from scipy.spatial import cKDTree
 
 from app.tensor.deviation import Deviation
+from app.tensor.sextic import Sextic, build_sextic, fill_spreads
 
 FloatArray = npt.NDArray[np.float64]
 
-_MERIDIANS: Final = 60
+_MERIDIANS: Final = 36
 _LONGEST_STEP: Final = 0.03
+_FIRST_STEP: Final = 1e-3
 _SHORTEST_STEP: Final = 1e-12
 _STALLED: Final = 1e-2
-_STEP_LIMIT: Final = 20000
+_FARTHEST_MOVE: Final = 1e-6
+_STEP_LIMIT: Final = 5000
+_SLOPE_LIMIT: Final = 0.3
 _TURN_LIMIT: Final = float(np.cos(0.16))
 _TURN_SMALL: Final = float(np.cos(0.08))
-
-_FLOOR: Final = 1e-5
-"""Where fewer than five independent errors exist the curve may touch itself; errors this small part the touching
-pieces while the curve is followed. Its points are then moved onto the curve itself."""
-
-_EPSILON: Final = np.zeros((3, 3, 3))
-for _i, _j, _k in permutations(range(3)):
-    _EPSILON[_i, _j, _k] = round(float(np.linalg.det(np.eye(3)[[_i, _j, _k]])))
-
-_EXPONENTS: Final = np.array(
-    [[0, 0, 0], [0, 0, 1], [0, 0, 2], [0, 1, 1], [0, 1, 2], [0, 2, 2], [1, 1, 1], [1, 1, 2], [1, 2, 2], [2, 2, 2]]
-)
-_MULTIPLICITY: Final = np.array([1.0, 3.0, 3.0, 3.0, 6.0, 3.0, 1.0, 3.0, 3.0, 1.0])
-
-
-@dataclass(frozen=True)
-class _Border:
-    """f as a weighted sum of squares of cubic forms.
-
-    Attributes:
-        forms: shape (k, 3, 3, 3), symmetric in the last three; the value is the form applied to n three times.
-        weights: shape (k,), 1 for P_a and −bound for Q_ab.
-    """
-
-    forms: FloatArray
-    weights: FloatArray
-
-    def evaluate(self, direction: FloatArray) -> tuple[float, FloatArray]:
-        """F and its gradient across a unit vector (3,)."""
-        once = (self.forms @ direction) @ direction
-        values = once @ direction
-        weighted = self.weights * values
-        value = float(weighted @ values)
-        gradient: FloatArray = 6.0 * (weighted @ once - value * direction)
-        return value, gradient
-
-    def measure(self, directions: FloatArray) -> FloatArray:
-        """F of vectors (m, 3), shape (m,)."""
-        values: FloatArray = self._apply(directions) ** 2 @ self.weights
-        return values
-
-    def measure_chi2(self, directions: FloatArray) -> FloatArray:
-        """χ² over its bound, shape (m,)."""
-        squares = self._apply(directions) ** 2
-        effects = self.weights > 0.0
-        variances = squares[:, ~effects] @ -self.weights[~effects]
-        ratio: FloatArray = np.sum(squares[:, effects], axis=1) / np.maximum(variances, 1e-300)
-        return ratio
-
-    def _apply(self, directions: FloatArray) -> FloatArray:
-        coefficients = self.forms[:, _EXPONENTS[:, 0], _EXPONENTS[:, 1], _EXPONENTS[:, 2]] * _MULTIPLICITY
-        applied: FloatArray = np.prod(directions[:, _EXPONENTS], axis=2) @ coefficients.T
-        return applied
-
 
 def trace_border(deviation: Deviation, bound: float) -> list[FloatArray] | None:
     """Closed curves (k, 3) in the crystal frame with the area to their left; None where it is the whole sphere.
@@ -101,8 +47,8 @@ def trace_border(deviation: Deviation, bound: float) -> list[FloatArray] | None:
     frame = np.linalg.eigh(deviation.matrix)[1].T[::-1]
     matrix = np.diag(np.einsum("ij,jk,ik->i", frame, deviation.matrix, frame))
     spreads = frame @ deviation.spreads @ frame.T
-    true = _build_border(matrix, spreads, bound)
-    followed = true if len(spreads) == 5 else _build_border(matrix, _fill_spreads(spreads), bound)
+    true = build_sextic(matrix, spreads, bound)
+    followed = true if len(spreads) == 5 else build_sextic(matrix, fill_spreads(spreads), bound)
     seeds = _find_seeds(followed)
     if len(seeds) == 0:
         return None
@@ -125,34 +71,7 @@ def trace_border(deviation: Deviation, bound: float) -> list[FloatArray] | None:
     return curves
 
 
-def _build_border(matrix: FloatArray, spreads: FloatArray, bound: float) -> _Border:
-    effects = _build_forms(matrix[None], spreads)
-    first, second = np.triu_indices(len(spreads), 1)
-    variances = _build_forms(spreads[first], spreads[second])
-    weights = np.concatenate([np.ones(len(effects)), np.full(len(variances), -bound)])
-    return _Border(np.concatenate([effects, variances]), weights)
-
-
-def _build_forms(first: FloatArray, second: FloatArray) -> FloatArray:
-    """det[n, Xn, Yn] as symmetric arrays of shape (k, 3, 3, 3), of X and Y of shape (k, 3, 3)."""
-    first, second = np.broadcast_arrays(first, second)
-    forms = np.einsum("ajk,njb,nkc->nabc", _EPSILON, first, second)
-    turned: FloatArray = (
-        sum(np.transpose(forms, (0, *(1 + i for i in order))) for order in permutations(range(3))) / 6.0
-    )
-    return turned
-
-
-def _fill_spreads(spreads: FloatArray) -> FloatArray:
-    """Small errors added in all traceless directions that have none."""
-    identity = np.eye(3).reshape(1, 9)
-    skew = _EPSILON.reshape(3, 9)
-    taken = np.concatenate([identity, skew, spreads.reshape(-1, 9)])
-    missing = np.linalg.svd(taken)[2][len(taken) :].reshape(-1, 3, 3)
-    return np.concatenate([spreads, _FLOOR * np.linalg.norm(spreads[0]) * missing])
-
-
-def _find_seeds(border: _Border) -> FloatArray:
+def _find_seeds(border: Sextic) -> FloatArray:
     """Points of the border on every part of it, shape (m, 3)."""
     axes = np.eye(3)
     seeds: list[FloatArray] = []
@@ -171,11 +90,12 @@ def _find_seeds(border: _Border) -> FloatArray:
     return np.array(seeds).reshape(-1, 3)
 
 
-def _search_outward(border: _Border, start: FloatArray, ahead: FloatArray, angles: FloatArray) -> list[FloatArray]:
+def _search_outward(border: Sextic, start: FloatArray, ahead: FloatArray, angles: FloatArray) -> list[FloatArray]:
     """The first crossing on the great circle from one direction toward another at right angles."""
 
     def place(angle: float) -> FloatArray:
-        return np.cos(angle) * start + np.sin(angle) * ahead
+        placed: FloatArray = np.cos(angle) * start + np.sin(angle) * ahead
+        return placed
 
     values = border.measure(np.cos(angles)[:, None] * start + np.sin(angles)[:, None] * ahead)
     changes = np.flatnonzero(np.sign(values[1:]) * np.sign(values[:-1]) < 0)
@@ -189,7 +109,7 @@ def _search_outward(border: _Border, start: FloatArray, ahead: FloatArray, angle
     return [place(angle)]
 
 
-def _solve_meridians(border: _Border, pole: FloatArray, aheads: FloatArray) -> list[FloatArray]:
+def _solve_meridians(border: Sextic, pole: FloatArray, aheads: FloatArray) -> list[FloatArray]:
     """All crossings of the great circles through a pole and each of (m, 3) directions across it."""
     # Along pole + x · ahead every cubic form is a cubic in x.
     forms = border.forms
@@ -215,7 +135,7 @@ def _solve_meridians(border: _Border, pole: FloatArray, aheads: FloatArray) -> l
     return found
 
 
-def _search_gaps(border: _Border) -> list[FloatArray]:
+def _search_gaps(border: Sextic) -> list[FloatArray]:
     """Crossings on the way from the summits of χ² to the axes: the borders of gaps too small for the meridians."""
     count = 1500
     # A spiral of even density over half the sphere; the other half repeats it.
@@ -255,8 +175,8 @@ def _search_gaps(border: _Border) -> list[FloatArray]:
     return found
 
 
-def _correct(border: _Border, start: FloatArray, reach: float) -> FloatArray | None:
-    """The point of the border straight down the gradient from a start, at most ``reach`` away; None if there is none."""
+def _correct(border: Sextic, start: FloatArray, reach: float) -> FloatArray | None:
+    """The point of the border down the gradient from a start, at most ``reach`` away; None if there is none."""
     point, moved, before = start, 0.0, np.inf
     for _ in range(20):
         value, gradient = border.evaluate(point)
@@ -287,42 +207,48 @@ def _find_tangent(gradient: FloatArray, point: FloatArray) -> FloatArray:
     x, y, z = gradient.tolist()
     tangent = np.array([b * z - c * y, c * x - a * z, a * y - b * x])
     length = float(np.sqrt(tangent @ tangent))
-    return tangent / length if length > 0.0 else tangent
+    unit: FloatArray = tangent / (length or 1.0)
+    return unit
 
 
-def _follow(border: _Border, start: FloatArray) -> tuple[FloatArray, bool]:
+def _follow(border: Sextic, start: FloatArray) -> tuple[FloatArray, bool]:
     """The curve through a point of the border, and whether it closed; then its first point is repeated."""
-    tangent = first_tangent = _find_tangent(border.evaluate(start)[1], start)
-    point, points, step = start, [start], _LONGEST_STEP
+    gradient = border.evaluate(start)[1]
+    tangent = first_tangent = _find_tangent(gradient, start)
+    steepness = float(np.sqrt(gradient @ gradient))
+    point, points, step = start, [start], _FIRST_STEP
     for _ in range(_STEP_LIMIT):
         while True:
             ahead = point + step * tangent
             trial = _correct(border, ahead / np.sqrt(ahead @ ahead), 0.25 * step)
             if trial is not None:
-                turned = _find_tangent(border.evaluate(trial)[1], trial)
+                gradient = border.evaluate(trial)[1]
+                turned, slope = _find_tangent(gradient, trial), float(np.sqrt(gradient @ gradient))
                 cosine = float(turned @ tangent)
-                if cosine >= _TURN_LIMIT:
+                if cosine >= _TURN_LIMIT and slope >= _SLOPE_LIMIT * steepness:
                     break
             step /= 2.0
             if step < _SHORTEST_STEP:
-                hop = _cross_over(border, point, tangent)
-                if hop is None:
+                landed = _cross_over(border, point, tangent)
+                if landed is None:
                     return np.array(points), False
-                trial, turned = hop
-                cosine = 1.0
+                trial, cosine, gradient = landed, 1.0, border.evaluate(landed)[1]
+                turned, slope = _find_tangent(gradient, landed), float(np.sqrt(gradient @ gradient))
                 break
         if len(points) > 2 and _passes(point, trial, start, tangent, first_tangent):
             points.append(start)
             return np.array(points), True
         points.append(trial)
-        point, tangent = trial, turned
-        if cosine > _TURN_SMALL:
-            step = min(1.6 * step, _LONGEST_STEP)
+        # Where the gradient falls, two parts of the curve come near each other: no leap from the one to the other.
+        reach = 0.6 * step * slope / (steepness - slope) if slope < steepness else _LONGEST_STEP
+        grown = 1.6 * step if cosine > _TURN_SMALL else step
+        step = min(grown, reach, _LONGEST_STEP)
+        point, tangent, steepness = trial, turned, slope
     return np.array(points), False
 
 
-def _cross_over(border: _Border, point: FloatArray, tangent: FloatArray) -> tuple[FloatArray, FloatArray] | None:
-    """From the tip of a needle, too sharp to be followed round, to the other flank: its point and tangent."""
+def _cross_over(border: Sextic, point: FloatArray, tangent: FloatArray) -> FloatArray | None:
+    """From the tip of a needle, too sharp to be followed round, to a point of the other flank."""
     aside = np.cross(point, tangent)
     widths = np.geomspace(3e-13, 1e-6, 300)
     for side in (1.0, -1.0):
@@ -336,10 +262,8 @@ def _cross_over(border: _Border, point: FloatArray, tangent: FloatArray) -> tupl
             continue
         width = widths[inner[0] + outer[0]]
         landed = _correct(border, point + side * width * aside, width)
-        if landed is not None:
-            turned = _find_tangent(border.evaluate(landed)[1], landed)
-            if turned @ tangent < 0.0:
-                return landed, turned
+        if landed is not None and _find_tangent(border.evaluate(landed)[1], landed) @ tangent < 0.0:
+            return landed
     return None
 
 
@@ -368,8 +292,8 @@ def _lie_on(curve: FloatArray, points: FloatArray, tangents: FloatArray) -> npt.
     return matched
 
 
-def _settle(border: _Border, curve: FloatArray) -> FloatArray:
-    """Points of a nearby curve moved onto this border; those that find no place on it are left out."""
-    moved = [_correct(border, point, 0.01) for point in curve[:-1]]
+def _settle(border: Sextic, curve: FloatArray) -> FloatArray:
+    """Points of a nearby curve moved onto this border; those where it touches itself are left out."""
+    moved = [_correct(border, point, _FARTHEST_MOVE) for point in curve[:-1]]
     kept = [point for point in moved if point is not None]
     return np.array([*kept, kept[0]]).reshape(-1, 3) if kept else np.zeros((0, 3))

@@ -7,26 +7,33 @@ set with their kinds, or None where the set is the whole sphere. Arcs run forth 
 from __future__ import annotations
 
 from collections.abc import Callable
-from typing import Final, Literal
+from typing import Final
 
 import numpy as np
 import numpy.typing as npt
 from scipy.optimize import brentq, minimize_scalar
 
+from app.errors import InputError
 from app.tensor.deviation import LOST, Deviation
+from app.tensor.region_shapes import (
+    Curve,
+    build_arc,
+    build_circle,
+    build_points,
+    find_plane_axes,
+    go_forth_and_back,
+)
 
 FloatArray = npt.NDArray[np.float64]
-CurveKind = Literal["area", "line", "point"]
-Curve = tuple[CurveKind, FloatArray]
-
-_STEP: Final = np.deg2rad(1.0)
-"""Spacing of points along circles and arcs."""
 
 _SIDE_COUNT: Final = 90
 """Points along each side of an area between two poles: even, so that none lies on the plane between them."""
 
 _FAMILY_TURN: Final = 0.02
 """Largest turn in radians of an axis between neighbours in a family of tensors."""
+
+_MOST_STEPS: Final = 20_000
+"""Tensors of a family that are looked at; more are needed only where rounding turns the axes."""
 
 
 def trace_exact(matrix: FloatArray, size: float) -> list[Curve] | None:
@@ -37,8 +44,8 @@ def trace_exact(matrix: FloatArray, size: float) -> list[Curve] | None:
         return None
     if low or high:
         axis = vectors[:, 2 if low else 0]
-        return [*_points(axis), ("line", _circle(axis))]
-    return [point for index in (2, 1, 0) for point in _points(vectors[:, index])]
+        return [*build_points(axis), ("line", build_circle(axis))]
+    return [point for index in (2, 1, 0) for point in build_points(vectors[:, index])]
 
 
 def trace_family(deviation: Deviation, bound: float) -> list[Curve] | None:
@@ -54,10 +61,11 @@ def trace_family(deviation: Deviation, bound: float) -> list[Curve] | None:
     for branch in range(3):
         path = paths[:, branch]
         if np.max(np.linalg.norm(path - path[0], axis=1)) <= LOST:
-            curves += _points(path[0])
+            # The middle of a path too short to be drawn: A itself.
+            curves += build_points(path[int(np.argmin(np.abs(steps)))])
         else:
-            curves += [("line", _forth_and_back(sign * path)) for sign in (1.0, -1.0)]
-    return curves + [("line", _circle(axis)) for axis in _find_meetings(deviation, spread, steps)]
+            curves += [("line", go_forth_and_back(sign * path)) for sign in (1.0, -1.0)]
+    return curves + [("line", build_circle(axis)) for axis in _find_meetings(deviation, spread, steps)]
 
 
 def _follow_axes(matrix: FloatArray, spread: FloatArray, half: float) -> tuple[FloatArray, FloatArray]:
@@ -69,6 +77,12 @@ def _follow_axes(matrix: FloatArray, spread: FloatArray, half: float) -> tuple[F
         wide = (np.min(overlaps, axis=1) < np.cos(_FAMILY_TURN)) & (np.diff(steps) > 1e-13 * half)
         if not np.any(wide):
             break
+        if len(steps) > _MOST_STEPS:
+            raise InputError(
+                "The variances lie too many orders of magnitude apart for the region to be traced.",
+                field="tensor.covariance",
+                hint="Give the covariance in the square of the tensor's unit, and leave out what nothing is known of.",
+            )
         steps = np.sort(np.concatenate([steps, (steps[:-1] + steps[1:])[wide] / 2.0]))
     axes = np.swapaxes(np.linalg.eigh(matrix + steps[:, None, None] * spread)[1], 1, 2)
     paths = axes.copy()
@@ -91,10 +105,10 @@ def _find_meetings(deviation: Deviation, spread: FloatArray, steps: FloatArray) 
     found: list[FloatArray] = []
     for lower in (0, 1):
         padded = np.concatenate([[np.inf], gaps[:, lower], [np.inf]])
-        for index in np.flatnonzero((padded[1:-1] <= padded[:-2]) & (padded[1:-1] <= padded[2:])):
+        for index in np.flatnonzero((padded[1:-1] <= padded[:-2]) & (padded[1:-1] <= padded[2:])).tolist():
             low, high = steps[max(index - 1, 0)], steps[min(index + 1, len(steps) - 1)]
             best = minimize_scalar(gap, bounds=(low, high), args=(lower,), method="bounded", options={"xatol": 1e-12})
-            nearest = min((float(best.x), float(steps[index])), key=lambda t: gap(t, lower))
+            nearest = float(best.x) if best.fun < gaps[index, lower] else float(steps[index])
             if gap(nearest, lower) <= LOST * reach:
                 vectors = np.linalg.eigh(deviation.matrix + nearest * spread)[1]
                 axis = vectors[:, 2 if lower == 0 else 0]
@@ -109,14 +123,14 @@ def trace_triple(deviation: Deviation, single: float, double: float) -> list[Cur
     values = np.einsum("ni,ij,nj->n", axes, deviation.matrix, axes)
     errors = np.einsum("ni,aij,nj->na", axes, deviation.spreads, axes)
     gaps, gap_errors = np.diff(values), np.diff(errors, axis=0)
-    if gaps @ np.linalg.solve(gap_errors @ gap_errors.T, gaps) <= double:
+    if _can_vanish(gaps, gap_errors.T, double):
         return None
-    curves = [point for axis in axes for point in _points(axis)]
+    curves = [point for axis in axes for point in build_points(axis)]
     for alone, first, second in ((0, 1, 2), (1, 2, 0), (2, 0, 1)):
         gap = abs(values[first] - values[second])
         sigma = float(np.linalg.norm(errors[first] - errors[second]))
         if gap <= max(np.sqrt(single) * sigma, LOST * deviation.size if sigma <= LOST else 0.0):
-            curves.append(("line", _circle(axes[alone])))
+            curves.append(("line", build_circle(axes[alone])))
     return curves
 
 
@@ -128,7 +142,7 @@ def trace_plane(deviation: Deviation, single: float, double: float) -> list[Curv
     on the azimuth alone, and areas lie between two such half circles.
     """
     axis = deviation.axes[0]
-    zero, right = _find_plane_axes(deviation.matrix, axis)
+    zero, right = find_plane_axes(deviation.matrix, axis)
     members = np.array([deviation.matrix, *deviation.spreads])
     along_zero, along_right = members @ zero @ zero, members @ right @ right
     triples = np.stack(
@@ -144,12 +158,12 @@ def trace_plane(deviation: Deviation, single: float, double: float) -> list[Curv
     if areas is None:
         return None
     sector = _solve_sector(float(triples[0, 1]), triples[1:, 1:], single)
-    curves = _points(axis)
+    curves = build_points(axis)
     if sector is None:
-        curves.append(("line", _circle(axis)))
+        curves.append(("line", build_circle(axis)))
     else:
-        for quarter in range(4):
-            curves.append(_arc(zero, right, (np.array(sector) / 2.0) + quarter * np.pi / 2.0))
+        for turn in np.arange(4) * np.pi / 2.0:
+            curves.append(build_arc(zero, right, sector[0] / 2.0 + turn, sector[1] / 2.0 + turn))
     for low, high in areas:
         for turn in (0.0, np.pi):
             curves.append(("area", _sector_border(axis, zero, right, low + turn, high + turn)))
@@ -161,35 +175,31 @@ def trace_cone(deviation: Deviation, normal: FloatArray, single: float, double: 
     members = np.array([deviation.matrix, *deviation.spreads]) @ normal
     vector = members[0] - (members[0] @ normal) * normal
     length = float(np.linalg.norm(vector))
-    ahead = vector / length if length > 0.0 else _find_plane_axes(np.diag([1.0, 2.0, 3.0]), normal)[0]
+    ahead = vector / length if length > 0.0 else find_plane_axes(np.diag([1.0, 2.0, 3.0]), normal)[0]
     aside = np.cross(normal, ahead)
     errors = np.stack([members[1:] @ ahead, members[1:] @ aside], axis=1)
-    mean = np.array([length, 0.0])
-    if mean @ np.linalg.solve(errors.T @ errors, mean) <= double:
+    if _can_vanish(np.array([length, 0.0]), errors, double):
         return None
     sector = _solve_sector(length, errors, single)
     if sector is None:
-        cones = [(_circle(normal) + side * normal) / np.sqrt(2.0) for side in (1.0, -1.0)]
-        return [("line", curve) for curve in [_circle(normal), *cones]]
+        cones = [(build_circle(normal) + side * normal) / np.sqrt(2.0) for side in (1.0, -1.0)]
+        return [("line", curve) for curve in [build_circle(normal), *cones]]
     curves: list[Curve] = []
     for turn in (0.0, np.pi):
         # The sector is of the direction across which v has no part: of the axis itself in the plane, and of the
         # direction at right angles to its azimuth on the cone.
-        curves.append(_arc(ahead, aside, np.array(sector) + turn + np.pi / 2.0))
-        kind, arc = _arc(ahead, aside, np.array(sector) + turn)
+        curves.append(build_arc(aside, -ahead, sector[0] + turn, sector[1] + turn))
+        kind, arc = build_arc(ahead, aside, sector[0] + turn, sector[1] + turn)
         curves += [(kind, (arc + side * normal) / np.sqrt(2.0)) for side in (1.0, -1.0)]
     return curves
 
 
-def _find_plane_axes(matrix: FloatArray, normal: FloatArray) -> tuple[FloatArray, FloatArray]:
-    """The principal axes of a matrix within the plane across a normal, the second = normal × first."""
-    start = np.eye(3)[int(np.argmin(np.abs(normal)))]
-    first = start - normal * (normal @ start)
-    first /= np.linalg.norm(first)
-    second = np.cross(normal, first)
-    angle = np.arctan2(2.0 * (first @ matrix @ second), first @ matrix @ first - second @ matrix @ second) / 2.0
-    zero = np.cos(angle) * first + np.sin(angle) * second
-    return zero, np.cross(normal, zero)
+def _can_vanish(means: FloatArray, errors: FloatArray, bound: float) -> bool:
+    """Whether χ² of two quantities (2,) with errors (r, 2) against zero is within a bound (Binet and Cauchy)."""
+    first, second = np.triu_indices(len(errors), 1)
+    effects = means[0] * errors[:, 1] - means[1] * errors[:, 0]
+    variances = errors[first, 0] * errors[second, 1] - errors[first, 1] * errors[second, 0]
+    return bool(np.sum(effects**2) <= bound * np.sum(variances**2))
 
 
 def _solve_sector(mean: float, errors: FloatArray, bound: float) -> tuple[float, float] | None:
@@ -281,33 +291,8 @@ def _sector_border(axis: FloatArray, zero: FloatArray, right: FloatArray, low: f
 
     def side(azimuth: float) -> FloatArray:
         outward = np.cos(azimuth) * zero + np.sin(azimuth) * right
-        return np.cos(polar)[:, None] * axis + np.sin(polar)[:, None] * outward
+        line: FloatArray = np.cos(polar)[:, None] * axis + np.sin(polar)[:, None] * outward
+        return line
 
     # With the axis to the north azimuths grow to the east, so the area is to the left both down and up.
     return np.concatenate([[axis], side(low), [-axis], side(high)[::-1], [axis]]) + 0.0
-
-
-def _points(axis: FloatArray) -> list[Curve]:
-    return [("point", (sign * axis)[None, :] + 0.0) for sign in (1.0, -1.0)]
-
-
-def _circle(axis: FloatArray) -> FloatArray:
-    """The great circle across an axis, closed."""
-    zero, right = _find_plane_axes(np.zeros((3, 3)), axis)
-    angles = np.linspace(0.0, 2.0 * np.pi, round(2.0 * np.pi / _STEP) + 1)
-    circle = np.cos(angles)[:, None] * zero + np.sin(angles)[:, None] * right
-    circle[-1] = circle[0]
-    return circle
-
-
-def _arc(zero: FloatArray, right: FloatArray, ends: FloatArray) -> Curve:
-    """Forth and back between two azimuths, or a point where they agree."""
-    if ends[1] - ends[0] <= LOST * 1e-3:
-        angle = float(np.mean(ends))
-        return "point", (np.cos(angle) * zero + np.sin(angle) * right)[None, :]
-    angles = np.linspace(ends[0], ends[1], max(9, int((ends[1] - ends[0]) / _STEP) + 2))
-    return "line", _forth_and_back(np.cos(angles)[:, None] * zero + np.sin(angles)[:, None] * right)
-
-
-def _forth_and_back(path: FloatArray) -> FloatArray:
-    return np.concatenate([path, path[-2::-1]])
