@@ -19,7 +19,7 @@ import numpy.typing as npt
 
 from app.crystal.cif_text import find_values, shorten
 from app.crystal.crystal import build_crystal
-from app.crystal.group import POINT_GROUP_SYMBOLS, SHORT_MONOCLINIC, collect_operations, find_group
+from app.crystal.group import POINT_GROUP_SYMBOLS, SHORT_MONOCLINIC, collect_operations, find_group, shorten_symbol
 from app.errors import InputError
 
 OperationSet = frozenset[tuple[int, ...]]
@@ -196,20 +196,12 @@ def _find_entry(text: str, cell: list[float]) -> gemmi.SpaceGroup | None:
     plain = re.sub(r"\s*:?\s*Z$", ":2", re.sub(r"\s+:?\s*S$", ":1", plain))
     if not 2 <= len(plain) <= 60 or not plain[0].isalpha():
         return None
-    for spelled in (plain, _shorten_symbol(plain)):
+    letter, *words = plain.split()
+    for spelled in (plain, " ".join([letter, *shorten_symbol(words)])):
         entry = gemmi.find_spacegroup_by_name(spelled, cell[3], cell[5])
         if entry is not None:
             return entry
     return None
-
-
-def _shorten_symbol(symbol: str) -> str:
-    """P 21/m 2/n 2/a is P m n a, F 4/m -3 2/m is F m -3 m: International Tables A (2016), section 1.4.1."""
-    letter, *parts = symbol.split()
-    short = [re.sub(r"^[1-6]{1,2}/([a-n])$", r"\1", part) for part in parts]
-    if len(parts) == 3 and parts[0].startswith(("4", "6")) and parts[1] != "-3":
-        short[0] = parts[0]
-    return " ".join([letter, *short])
 
 
 def _read_space_group_number(block: gemmi.cif.Block, unread: list[str]) -> int | None:

@@ -14,6 +14,7 @@ from __future__ import annotations
 import re
 from dataclasses import dataclass
 from functools import lru_cache
+from itertools import accumulate
 from typing import Final, Literal
 
 import gemmi
@@ -89,7 +90,7 @@ def find_group(symbol: str, unique_axis: str | None = None, rhombohedral_cell: b
     if len(symbol) > 60:
         raise InputError("A group symbol has at most 60 characters.", field="group")
     spelled = _spell(symbol)
-    limiting = spelled.replace("infinity", "∞").replace("inf", "∞").replace(" ", "")
+    limiting = re.sub("inf(?:inity)?", "∞", spelled, flags=re.IGNORECASE).replace(" ", "")
     compact = spelled.replace(" ", "")
     short = compact in SHORT_MONOCLINIC
     if unique_axis is not None and unique_axis not in ("a", "b", "c"):
@@ -161,33 +162,55 @@ def collect_operations(operations: gemmi.GroupOps) -> FloatArray:
 
 
 def _find_space_group(spelled: str, shown: str, rhombohedral_cell: bool) -> gemmi.SpaceGroup:
-    letter, rest = spelled[0].upper(), spelled[1:].strip()
+    letter, rest = spelled[0].upper(), re.sub(r"\s*/\s*", "/", spelled[1:].strip())
     body, colon, extension = rest.partition(":")
     words = body.split()
-    name = f"{letter} {' '.join(words)}"
     if len(words) == 1 and re.fullmatch(r"(?:2[1]?)?(?:/?[mabcden])?", words[0]) and words[0]:
         # A short monoclinic symbol means unique axis b and nothing else: P 21/b, say, is left to its full form.
-        found = gemmi.find_spacegroup_by_name(f"{letter} 1 {words[0]} 1")
+        found = _look_up(f"{letter} 1 {words[0]} 1")
         if found is None:
+            other = f"{letter} 1 1 {words[0]}"
             raise InputError(
                 f"The short symbol “{shown}” is not one with unique axis b.",
                 field="group",
-                hint=f"Write it in full, for example {letter} 1 1 {words[0]} for unique axis c.",
+                hint=f"Write its setting in full, like {other if _look_up(other) else 'P 1 21/c 1'}.",
             )
         return found
+    suffix = ""
     if colon:
-        name = f"{name}:{extension.strip().upper()}"
+        suffix = f":{extension.strip().upper()}"
     elif letter == "R":
-        name = f"{name}:{'R' if rhombohedral_cell else 'H'}"
-    found = gemmi.find_spacegroup_by_name(name)
-    if found is None or found.xhm()[0] != letter:
-        raise InputError(
-            f"“{shown}” is not a space-group symbol in the tables.",
-            field="group",
-            hint="Separate its parts by spaces and write the setting in full, like P 1 21/c 1, R -3 c:H or I 41/a:2; "
-            "or give the point group.",
-        )
-    return found
+        suffix = f":{'R' if rhombohedral_cell else 'H'}"
+    for parts in (words, shorten_symbol(words)):
+        found = _look_up(f"{letter} {' '.join(parts)}{suffix}")
+        if found is not None and found.xhm()[0] == letter and _is_divided_alike(parts, found):
+            return found
+    raise InputError(
+        f"“{shown}” is not a space-group symbol in the tables.",
+        field="group",
+        hint="Separate its parts by spaces and write the setting in full, like P 1 21/c 1, R -3 c:H or I 41/a:2; "
+        "or give the point group.",
+    )
+
+
+def _look_up(name: str) -> gemmi.SpaceGroup | None:
+    # The tables take text that has a UTF-8 form, and their symbols are plain letters.
+    return gemmi.find_spacegroup_by_name(name) if name.isascii() else None
+
+
+def shorten_symbol(words: list[str]) -> list[str]:
+    """The short form of a full symbol: 21/n 21/m 21/a is n m a, 4/m 2/m 2/m is 4/m m m, 4/m -3 2/m is m -3 m."""
+    if words.count("1") == 2:
+        # In a monoclinic symbol the 2/ is no longer form of the same: F 1 2/d 1 is not F 1 d 1.
+        return words
+    axes = r"\d+/" if "-3" in words[1:] else "21?/"
+    return [re.sub(f"^{axes}(?=[a-z]$)", "", word) for word in words]
+
+
+def _is_divided_alike(words: list[str], found: gemmi.SpaceGroup) -> bool:
+    """Whether no part of the found symbol spans two of the words: the tables would read P 3 2 as P 32."""
+    parts = found.hm.split()[1:]
+    return "".join(words) != "".join(parts) or set(accumulate(map(len, words))) <= set(accumulate(map(len, parts)))
 
 
 def _limiting_operations(symbol: str) -> FloatArray:

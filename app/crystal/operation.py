@@ -62,13 +62,14 @@ def find_turn(matrix: FloatArray) -> tuple[FloatArray | None, float, bool]:
     """Axis (unit vector, right-handed), angle in degrees (0 to 180) and whether an inversion is joined."""
     improper = bool(np.linalg.det(matrix) < 0)
     proper = -matrix if improper else matrix
-    cosine = np.clip((np.trace(proper) - 1.0) / 2.0, -1.0, 1.0)
-    angle = float(np.rad2deg(np.arccos(cosine)))
+    # Twice the axis times the sine of the angle; with the cosine from the trace the angle keeps its digits near 0.
+    skew = np.array([proper[2, 1] - proper[1, 2], proper[0, 2] - proper[2, 0], proper[1, 0] - proper[0, 1]])
+    size = float(np.linalg.norm(skew))
+    angle = float(np.rad2deg(np.arctan2(size, np.trace(proper) - 1.0)))
     if angle < 1e-6:
         return None, 0.0, improper
-    skew = np.array([proper[2, 1] - proper[1, 2], proper[0, 2] - proper[2, 0], proper[1, 0] - proper[0, 1]])
-    if np.linalg.norm(skew) > 1e-6:
-        return skew / np.linalg.norm(skew), angle, improper
+    if size > 1e-6:
+        return skew / size, angle, improper
     # A half-turn is 2 n nᵀ − 1: its axis is the column of n nᵀ with the largest diagonal entry.
     outer = (proper + np.eye(3)) / 2.0
     column = outer[:, int(np.argmax(np.diag(outer)))]

@@ -83,8 +83,8 @@ class Estimate:
         if is_singular(self.matrix):
             return rods
         inverse = np.linalg.inv(self.matrix)
-        left, right = directions @ inverse, directions @ inverse.T
-        derivative = np.square(rods)[..., None, None] * left[..., :, None] * right[..., None, :]
+        left, right = rods[..., None] * (directions @ inverse), rods[..., None] * (directions @ inverse.T)
+        derivative = left[..., :, None] * right[..., None, :]
         return self.propagate(derivative.reshape(*derivative.shape[:-2], 9))
 
 

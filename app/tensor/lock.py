@@ -18,6 +18,8 @@ from app.tensor.kind import CELLS, Kind
 FloatArray = npt.NDArray[np.float64]
 
 SPECIMEN_AXES: Final = ("x", "y", "z")
+ANY: Final = "any "
+NO_OTHER_VALUE: Final = "leaves it no other value"
 _CRYSTAL_AXES: Final = ("x1", "x2", "x3")
 
 
@@ -97,12 +99,18 @@ def _find_cause(
         if np.linalg.norm(functional @ allowed) <= ZERO_TOLERANCE:
             operation = crystal.operations[index]
             name = _name_operation(crystal, operation, pose)
-            return f"the {name} {_describe_effect(operation, kind, position, relation, pose)}"
+            # Of all turns or all mirrors of a limiting group, the stand-in's own effect is not the reason.
+            stands_in = ANY in name
+            effect = NO_OTHER_VALUE if stands_in else _describe_effect(operation, kind, position, relation, pose)
+            return f"the {name} {effect}"
     for first, second in combinations(causes, 2):
         stacked = np.vstack([np.eye(9) - first[1], np.eye(9) - second[1]])
         space = np.linalg.svd(stacked)
         if np.linalg.norm(space.Vh[space.S <= ZERO_TOLERANCE] @ functional) <= ZERO_TOLERANCE:
             names = [_name_operation(crystal, crystal.operations[index], pose) for index, _ in (first, second)]
+            enough = next((name for name in names if ANY in name), None)
+            if enough is not None:
+                return f"the {enough} {NO_OTHER_VALUE}"
             return f"the {names[0]} and the {names[1]} together leave it no other value"
     return "the operations of the group together leave it no other value"
 
@@ -146,19 +154,19 @@ def _name_operation(crystal: Crystal, operation: Operation, pose: FloatArray | N
     names = _CRYSTAL_AXES if pose is None else SPECIMEN_AXES
     along = int(np.argmax(np.abs(frame_axis)))
     where = names[along] if abs(abs(frame_axis[along]) - 1.0) < 1e-12 else None
-    if (
-        crystal.group.limiting
-        and not operation.improper
-        and (operation.turn == 7 or crystal.group.symbol.startswith("∞∞"))
-    ):
-        place = where or "any direction"
-        return f"turn by any angle about {place}"
+    inverted = " with inversion" if operation.improper else ""
+    if operation.turn == 7:
+        return f"turn by any angle{inverted} about {where or 'x3'}"
+    if where is None and crystal.group.symbol.startswith("∞∞"):
+        return f"turn by any angle{inverted} about any direction"
+    if where is None and crystal.group.limiting and np.max(np.abs(operation.axis)) < 1.0 - 1e-12:
+        return f"{'mirror across' if operation.improper else 'half-turn about'} any direction at right angles to x3"
     if where is None:
         return operation.name
     if operation.turn == 2:
         return f"mirror across {where}" if operation.improper else f"half-turn about {where}"
     name = TURN_NAMES.get(operation.turn, "turn")
-    return f"{name}{' with inversion' if operation.improper else ''} about {where}"
+    return f"{name}{inverted} about {where}"
 
 
 def _describe_effect(
@@ -179,4 +187,4 @@ def _describe_effect(
         return f"turns {shown} into {'−' if products[target] < 0 else ''}{name_cell(target, axes)}"
     if operation.turn == 1:
         return f"turns {shown} into −{shown}"
-    return "leaves it no other value"
+    return NO_OTHER_VALUE

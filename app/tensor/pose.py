@@ -30,6 +30,12 @@ QUATERNION_TOLERANCE: Final = 1e-3
 PARALLEL_LIMIT: Final = 1e-9
 """Sine of the angle below which two directions count as parallel."""
 
+LARGEST_NUMBER: Final = 1e9
+"""An angle in degrees beyond this is a mistake."""
+
+GIMBAL_LIMIT: Final = 1e-12
+"""Sine of half the angle between z and ±x3 below which phi1 and phi2 turn about one axis."""
+
 _SHAPES: Final = (
     '{"matrix": C}, {"exact": ["z", direction], "toward": ["x", direction]}, {"axis": direction, "angle": degrees}, '
     '{"quaternion": [w, x, y, z]}, {"bunge": [phi1, PHI, phi2]} or '
@@ -49,21 +55,31 @@ class Pose:
 
     @property
     def bunge(self) -> list[float]:
-        """phi1 and phi2 in 0 to 360, PHI in 0 to 180 degrees; where PHI is 0 or 180, phi2 is 0."""
-        g = self.matrix.T
-        tilt = float(np.arctan2(np.hypot(g[2, 0], g[2, 1]), g[2, 2]))
-        if np.hypot(g[2, 0], g[2, 1]) < 1e-9:
-            first, second = float(np.arctan2(g[0, 1], g[0, 0])), 0.0
+        """phi1 and phi2 from 0 to below 360, PHI in 0 to 180 degrees; where PHI is 0 or 180, phi2 is 0."""
+        # C = Z(φ1) X(Φ) Z(φ2) as active turns has the quaternion cos ½Φ (cos ½(φ1+φ2), sin ½(φ1+φ2)) in w and z,
+        # sin ½Φ (cos ½(φ1−φ2), sin ½(φ1−φ2)) in x and y: near Φ = 0 the sum keeps its digits, near 180 the difference.
+        x, y, z, w = Rotation.from_matrix(self.matrix).as_quat()
+        tilt = 2.0 * float(np.arctan2(np.hypot(x, y), np.hypot(w, z)))
+        half_sum, half_difference = float(np.arctan2(z, w)), float(np.arctan2(y, x))
+        if np.hypot(x, y) < GIMBAL_LIMIT:
+            first, second, tilt = 2.0 * half_sum, 0.0, 0.0
+        elif np.hypot(w, z) < GIMBAL_LIMIT:
+            first, second, tilt = 2.0 * half_difference, 0.0, np.pi
         else:
-            first, second = float(np.arctan2(g[2, 0], -g[2, 1])), float(np.arctan2(g[0, 2], g[1, 2]))
-        turned = [float(np.rad2deg(angle)) % 360.0 for angle in (first, second)]
-        return [turned[0], float(np.rad2deg(tilt)), turned[1]]
+            first, second = half_sum + half_difference, half_sum - half_difference
+        return [_wrap(first), float(np.rad2deg(tilt)), _wrap(second)]
 
     @property
     def quaternion(self) -> list[float]:
         """W x y z with w not negative, of the turn that takes x1 x2 x3 onto x y z."""
         x, y, z, w = Rotation.from_matrix(self.matrix.T).as_quat(canonical=True)
         return [float(value) for value in (w, x, y, z)]
+
+
+def _wrap(angle: float) -> float:
+    """Radians as degrees from 0 to below 360; rounding below 0 counts as 0."""
+    degrees = float(np.rad2deg(angle)) % 360.0
+    return 0.0 if degrees >= 360.0 - 1e-12 else degrees
 
 
 IDENTITY: Final = Pose(np.eye(3))
@@ -109,7 +125,7 @@ def read_pose(given: Any, crystal: Crystal) -> Pose:
 def pose_from_matrix(matrix: npt.ArrayLike) -> Pose:
     """From C itself, orthonormal and proper to 1e-6, then made exact (the nearest rotation)."""
     rows = read_matrix(matrix)
-    if np.max(np.abs(rows @ rows.T - np.eye(3))) > MATRIX_TOLERANCE:
+    if np.max(np.abs(rows)) > 2.0 or np.max(np.abs(rows @ rows.T - np.eye(3))) > MATRIX_TOLERANCE:
         raise InputError(
             "The rows of the pose's matrix are not orthonormal to 1e-6.",
             field="matrix",
@@ -131,8 +147,8 @@ def pose_from_axes(exact: int, exact_direction: FloatArray, near: int, near_dire
         raise InputError(
             f"The axis {AXIS_LETTERS[exact]} is put in two places.", field="toward", hint="Name two different axes."
         )
-    across = near_direction - exact_direction * (exact_direction @ near_direction)
-    if np.linalg.norm(across) < PARALLEL_LIMIT:
+    across = _find_across(exact_direction, near_direction)
+    if across is None:
         raise InputError(
             f"The directions for {AXIS_LETTERS[exact]} and {AXIS_LETTERS[near]} are parallel, so the turn about "
             f"{AXIS_LETTERS[exact]} is open.",
@@ -141,10 +157,23 @@ def pose_from_axes(exact: int, exact_direction: FloatArray, near: int, near_dire
         )
     rows = np.zeros((3, 3))
     rows[exact] = exact_direction
-    rows[near] = across / np.linalg.norm(across)
+    rows[near] = across
     third = 3 - exact - near
     rows[third] = np.cross(rows[(third + 1) % 3], rows[(third + 2) % 3])
     return Pose(rows)
+
+
+def _find_across(axis: FloatArray, direction: FloatArray) -> FloatArray | None:
+    """The unit vector across ``axis`` nearest to ``direction``; None where the two are parallel."""
+    across = direction - axis * (axis @ direction)
+    size = np.linalg.norm(across)
+    if size < PARALLEL_LIMIT:
+        return None
+    across = across / size
+    # Of nearly parallel directions the difference has lost digits: taken away once more, it is square to the axis.
+    across = across - axis * (axis @ across)
+    unit: FloatArray = across / np.linalg.norm(across)
+    return unit
 
 
 def pose_from_axis_angle(axis: FloatArray, angle: float) -> Pose:
@@ -176,14 +205,13 @@ def pose_from_bunge(angles: FloatArray) -> Pose:
 
 def pose_from_tilt(start: FloatArray, tilt: float, toward: FloatArray, near_x: FloatArray | None = None) -> Pose:
     """Z is ``start`` tilted by ``tilt`` degrees toward ``toward``; x is near ``near_x``, else near ``toward``."""
-    across = toward - start * (start @ toward)
-    if np.linalg.norm(across) < PARALLEL_LIMIT:
+    across = _find_across(start, toward)
+    if across is None:
         raise InputError(
             "The direction to tilt toward is parallel to the one to tilt from.",
             field="toward",
             hint="Give a direction at an angle to the first.",
         )
-    across = across / np.linalg.norm(across)
     angle = np.deg2rad(tilt)
     z = np.cos(angle) * start + np.sin(angle) * across
     wanted = toward if near_x is None else near_x
@@ -213,9 +241,15 @@ def _resolve(given: Any, field: str, crystal: Crystal) -> FloatArray:
 
 
 def _read_number(given: Any, field: str) -> float:
-    if isinstance(given, bool) or not isinstance(given, int | float) or not abs(given) <= 1e9:
-        raise InputError(f"“{field}” is a finite number of degrees.", field=field)
-    return float(given)
+    if isinstance(given, bool) or not isinstance(given, int | float | np.integer | np.floating):
+        raise InputError(f"“{field}” is a finite number.", field=field)
+    try:
+        number = float(given)
+    except OverflowError:
+        number = np.inf
+    if not abs(number) <= LARGEST_NUMBER:
+        raise InputError(f"“{field}” is a finite number of at most {LARGEST_NUMBER:g}.", field=field)
+    return number
 
 
 def _read_numbers(given: Any, count: int, field: str) -> FloatArray:

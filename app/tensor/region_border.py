@@ -36,6 +36,7 @@ _SLOPE_LIMIT: Final = 0.3
 _TURN_LIMIT: Final = float(np.cos(0.16))
 _TURN_SMALL: Final = float(np.cos(0.08))
 
+
 def trace_border(deviation: Deviation, bound: float) -> list[FloatArray] | None:
     """Closed curves (k, 3) in the crystal frame with the area to their left; None where it is the whole sphere.
 

@@ -13,7 +13,7 @@ from app.errors import InputError
 from app.tensor.estimate import Estimate, build_estimate, check_covariance
 from app.tensor.form import Form, build_form
 from app.tensor.kind import Kind
-from app.tensor.matrix import read_matrix
+from app.tensor.matrix import LARGEST_CELL, read_matrix
 
 FloatArray = npt.NDArray[np.float64]
 
@@ -90,7 +90,14 @@ def _read_free(free: Mapping[str, float], form: Form) -> FloatArray:
     missing = [label for label in labels if label not in free]
     if missing:
         raise InputError(f"The free cell {missing[0]} has no value.", field=f"free.{missing[0]}", hint=hint)
-    values = np.array([free[label] for label in labels], dtype=np.float64)
-    if not np.all(np.isfinite(values)):
-        raise InputError("The value of a free cell is a finite number.", field="free")
+    values = np.zeros(len(labels))
+    for index, label in enumerate(labels):
+        try:
+            values[index] = free[label]
+        except (TypeError, ValueError):
+            values[index] = np.nan
+        if not abs(values[index]) <= LARGEST_CELL:
+            raise InputError(
+                f"The value of a free cell is a finite number of at most {LARGEST_CELL:g}.", field=f"free.{label}"
+            )
     return values

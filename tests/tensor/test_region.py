@@ -216,8 +216,7 @@ def test_small_areas_are_the_ellipses_of_the_linear_errors(sigma: float) -> None
             if i != j:
                 # The reach of an ellipse along an axis is √bound times the standard deviation along it.
                 reach = np.max(np.abs(mine[0] @ principal.axes[j]))
-                assert np.rad2deg(reach) == pytest.approx(
-                    np.sqrt(region.bound) * principal.axis_sigma[i, j], rel=2e-3)
+                assert np.rad2deg(reach) == pytest.approx(np.sqrt(region.bound) * principal.axis_sigma[i, j], rel=2e-3)
 
 
 @pytest.mark.parametrize("sigma", [1e-6, 0.05, 0.3, 0.45, 0.6, 0.8])
@@ -339,8 +338,12 @@ def test_the_last_gap_is_seen_until_it_closes() -> None:
     plain = triclinic(1.0)
     grid = draw_directions(4000, 7)
     start = grid[int(np.argmax(measure_directions(TRICLINIC, plain, grid).chi2))]
-    found = minimize(lambda n: -compute_plainly(plain, n / np.linalg.norm(n)), start, method="Nelder-Mead",
-                     options={"xatol": 1e-9, "fatol": 1e-13})
+    found = minimize(
+        lambda n: -compute_plainly(plain, n / np.linalg.norm(n)),
+        start,
+        method="Nelder-Mead",
+        options={"xatol": 1e-9, "fatol": 1e-13},
+    )
     closing = np.sqrt(-found.fun / chi2.ppf(0.95, 2))
     summit = found.x / np.linalg.norm(found.x)
     for margin in (1e-3, 1e-4, 1e-6):
@@ -366,8 +369,10 @@ def test_units_do_not_matter(scale: float) -> None:
     assert plain_lines.kinds == scaled_lines.kinds
 
 
-@pytest.mark.parametrize(("crystal", "make", "sigma"), [
-    (TRICLINIC, triclinic, 0.3), (MONOCLINIC, monoclinic, 0.1), (MONOCLINIC, monoclinic, 0.6)])
+@pytest.mark.parametrize(
+    ("crystal", "make", "sigma"),
+    [(TRICLINIC, triclinic, 0.3), (MONOCLINIC, monoclinic, 0.1), (MONOCLINIC, monoclinic, 0.6)],
+)
 def test_the_frame_rule_does_not_matter(crystal: Crystal, make: object, sigma: float) -> None:
     assert crystal.cell is not None
     other = build_crystal(crystal.cell.parameters, crystal.group.symbol, frame="x1=[1 1 1] x2=(1 -1 0)")
@@ -542,8 +547,10 @@ def test_axial_class_m_lies_in_the_plane_and_on_the_cone(sigma: float) -> None:
         allowed = build_tensor(crystal, Kind("axial"), free={"12": 1.0 + step[0], "23": 0.5 + step[1]})
         for axis in np.linalg.eigh(allowed.estimate.matrix)[1].T:
             assert np.min(np.linalg.norm(vertices - axis, axis=1)) < 0.01
-    assert find_region(crystal, build_tensor(
-        crystal, Kind("axial"), free={"12": 1.0, "23": 0.5}, covariance=100 * covariance / sigma**2)).everywhere
+    assert find_region(
+        crystal,
+        build_tensor(crystal, Kind("axial"), free={"12": 1.0, "23": 0.5}, covariance=100 * covariance / sigma**2),
+    ).everywhere
 
 
 @pytest.mark.parametrize("correlation", [0.95, 0.3, -0.95])

@@ -99,13 +99,15 @@ def test_quadric_pieces_edges_and_orientation(name, detail):
         assert len(numbers) == np.sum(surface.sheets == sheet)
         found = describe_pieces(local.reshape(-1, 3), len(numbers)) if len(own) else []
         assert [euler for euler, _ in found] == [EULER[piece] for piece in expected]
-        assert all((open_edges == 0) == (piece == "closed")
-                   for (_, open_edges), piece in zip(found, expected, strict=True))
+        assert all(
+            (open_edges == 0) == (piece == "closed") for (_, open_edges), piece in zip(found, expected, strict=True)
+        )
         corners = surface.vertices[own]
         normals = np.cross(corners[:, 1] - corners[:, 0], corners[:, 2] - corners[:, 0])
         assert np.all(np.sum(normals * (sheet * np.mean(corners, axis=1) @ matrix), axis=1) > 0.0)
-    spacing = np.linalg.norm(surface.vertices[surface.triangles] - surface.vertices[np.roll(surface.triangles, 1, 1)],
-                             axis=2)
+    spacing = np.linalg.norm(
+        surface.vertices[surface.triangles] - surface.vertices[np.roll(surface.triangles, 1, 1)], axis=2
+    )
     assert np.min(spacing) > 1e-3 * np.max(spacing), "doubled vertices or slivers"
 
 
@@ -207,9 +209,7 @@ def test_value_surface_volume_by_quadrature():
 
     def radius_cubed(azimuth: float, height: float, sheet: float) -> float:
         across = 1.0 - height * height
-        value = values[2] * height**2 + across * (
-            values[0] * np.cos(azimuth) ** 2 + values[1] * np.sin(azimuth) ** 2
-        )
+        value = values[2] * height**2 + across * (values[0] * np.cos(azimuth) ** 2 + values[1] * np.sin(azimuth) ** 2)
         return max(sheet * value, 0.0) ** 3 / 3.0
 
     for sheet in (1, -1):
@@ -280,9 +280,7 @@ def test_coarsest_and_finest(detail, kind):
     assert surface.triangles.min() == 0 and surface.triangles.max() == len(surface.vertices) - 1
 
 
-cells = st.one_of(
-    st.floats(-1e3, 1e3), st.sampled_from([0.0, 0.0, 1.0, -1.0, 1e-30, 1e30]), st.floats(-1e200, 1e200)
-)
+cells = st.one_of(st.floats(-1e3, 1e3), st.sampled_from([0.0, 0.0, 1.0, -1.0, 1e-30, 1e30]), st.floats(-1e200, 1e200))
 
 
 @settings(max_examples=150, deadline=None)

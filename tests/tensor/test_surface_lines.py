@@ -86,7 +86,8 @@ def test_zero_cone_for_every_sign_pattern(values, count):
 def test_zero_cone_of_a_semidefinite_tensor_is_the_ends_of_an_axis():
     # Reference: by hand, l1 n1² + l2 n2² with both of one sign vanishes only where n1 = n2 = 0.
     assert [curve.tolist() for curve in zero_cone(np.diag([2.0, 5.0, 0.0]))] in (
-        [[[0, 0, 1]], [[0, 0, -1]]], [[[0, 0, -1]], [[0, 0, 1]]]
+        [[[0, 0, 1]], [[0, 0, -1]]],
+        [[[0, 0, -1]], [[0, 0, 1]]],
     )
 
 
@@ -267,8 +268,10 @@ def test_lines_at_extreme_sizes(power):
     assert np.allclose(zero_cone(matrix * factor), zero_cone(matrix), atol=1e-9)
     for ours, plain in (
         (outline(matrix * factor, [1.0, 2.0, 3.0]), outline(matrix, [1.0, 2.0, 3.0])),
-        (value_lines(matrix * factor, "quadric", np.array([1.5, -0.5]) * factor),
-         value_lines(matrix, "quadric", [1.5, -0.5])),
+        (
+            value_lines(matrix * factor, "quadric", np.array([1.5, -0.5]) * factor),
+            value_lines(matrix, "quadric", [1.5, -0.5]),
+        ),
     ):
         assert len(ours) == len(plain) > 0
         for left, right in zip(ours, plain, strict=True):
