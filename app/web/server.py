@@ -2,14 +2,14 @@
 
 from __future__ import annotations
 
-import importlib
 from pathlib import Path
 
-from fastapi import APIRouter, FastAPI
+from fastapi import FastAPI
 from starlette.middleware import Middleware
 
+from app.store import open_store
 from app.version import VERSION
-from app.web import error_answers, pages, static_files
+from app.web import calculation, error_answers, live, pages, samples, sheet_page, static_files, tensor_page
 from app.web.answers import JsonAnswer
 from app.web.resources import static_folder
 from app.web.security import AnswerHeaders, BodyLimit, LoopbackOnly
@@ -47,20 +47,14 @@ def create_app(data_dir: Path | None = None) -> FastAPI:
         ],
     )
     app.state.data_dir = data_dir
+    app.state.store = None if data_dir is None else open_store(data_dir)
     error_answers.install(app)
     app.include_router(pages.router)
-    for router in _calculation_routers():
-        app.include_router(router)
+    app.include_router(samples.router)
+    app.include_router(tensor_page.router)
+    app.include_router(live.router)
+    app.include_router(sheet_page.router)
+    app.include_router(calculation.router)
     app.include_router(static_files.router)
     app.mount("/static", static_files.RevalidatedFiles(directory=static_folder()), name="static")
     return app
-
-
-def _calculation_routers() -> list[APIRouter]:
-    try:
-        calculation = importlib.import_module("app.web.calculation")
-    except ModuleNotFoundError as error:
-        if error.name != "app.web.calculation":
-            raise
-        return []
-    return [calculation.router]

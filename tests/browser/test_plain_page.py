@@ -8,7 +8,7 @@ from playwright.sync_api import Page, expect
 
 
 def test_it_shows_its_heading_and_leads_to_the_openapi_document(page: Page) -> None:
-    page.goto("/")
+    page.goto("/calls")
     expect(page.get_by_role("heading", level=1)).to_be_visible()
     expect(page.get_by_role("link", name="OpenAPI document")).to_have_attribute("href", "/openapi.json")
     paper = page.evaluate("getComputedStyle(document.documentElement).backgroundColor")
@@ -20,7 +20,7 @@ def test_it_shows_its_heading_and_leads_to_the_openapi_document(page: Page) -> N
 def test_it_fits_and_has_no_accessibility_violation(page: Page, width: int, scheme: str) -> None:
     page.set_viewport_size({"width": width, "height": 844})
     page.emulate_media(color_scheme="dark" if scheme == "dark" else "light")
-    page.goto("/")
+    page.goto("/calls")
     assert page.evaluate("document.documentElement.scrollWidth - window.innerWidth") <= 0
     violations = Axe().run(page).response["violations"]
     assert [violation["id"] for violation in violations] == []
@@ -28,7 +28,7 @@ def test_it_fits_and_has_no_accessibility_violation(page: Page, width: int, sche
 
 def test_the_plotting_script_draws_under_the_policy(page: Page) -> None:
     """The scene's kinds of trace work without inline scripts and without `eval`."""
-    page.goto("/")
+    page.goto("/calls")
     page.evaluate("document.addEventListener('securitypolicyviolation', e => console.error(e.violatedDirective))")
     page.add_script_tag(url="/static/plotly.min.js")
     # From a timer, because what a driver evaluates itself is exempt from the policy.

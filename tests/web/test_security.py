@@ -21,8 +21,8 @@ CIF = "/probe/cif"
 
 @pytest.mark.parametrize("host", ["127.0.0.1", "127.0.0.1:8010", "localhost", "LOCALHOST:99", "[::1]", "[::1]:8010"])
 def test_loopback_hosts_are_welcome(client: TestClient, host: str) -> None:
-    assert client.get("/", headers={"Host": host}).status_code == 200
-    assert client.get("/", headers={"Host": host, "Origin": f"http://{host}"}).status_code == 200
+    assert client.get("/calls", headers={"Host": host}).status_code == 200
+    assert client.get("/calls", headers={"Host": host, "Origin": f"http://{host}"}).status_code == 200
 
 
 @pytest.mark.parametrize(
@@ -136,7 +136,7 @@ def test_no_host_at_all_is_refused(served: Served) -> None:
 @pytest.mark.parametrize(
     ("method", "path", "status"),
     [
-        ("GET", "/", 200),
+        ("GET", "/calls", 200),
         ("GET", "/static/base.css", 200),
         ("GET", "/static/plotly.min.js", 200),
         ("GET", "/openapi.json", 200),

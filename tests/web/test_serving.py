@@ -19,7 +19,7 @@ from tests.processes import Served, command_environment, serving
 
 def test_the_first_line_says_where_it_is_and_it_is_there(served: Served) -> None:
     assert re.fullmatch(r"Halfturn is at http://127\.0\.0\.1:[0-9]+/\n", served.first_line)
-    answer = httpx.get(served.url)
+    answer = httpx.get(served.url, follow_redirects=True)
     assert answer.status_code == 200
     assert "server" not in answer.headers
     assert httpx.get(f"{served.url}openapi.json").json()["info"]["title"] == "Halfturn"
@@ -35,7 +35,7 @@ def test_it_stops_cleanly_when_told(tmp_path: Path, number: signal.Signals) -> N
     data = tmp_path / "data"
     with serving(data) as server, httpx.Client() as client:
         # A connection that stays open must not hold it up.
-        assert client.get(server.url).status_code == 200
+        assert client.get(f"{server.url}calls").status_code == 200
         server.process.send_signal(number)
         output, errors = server.process.communicate(timeout=10)
     assert server.process.returncode == 0

@@ -1,0 +1,267 @@
+"""What the front page shows of a subject, in words and numbers: once per tensor, and again in every pose."""
+
+from __future__ import annotations
+
+from typing import Any, Final
+
+import numpy as np
+import numpy.typing as npt
+
+from app.crystal.direction import format_indices, parse_direction, typeset_indices
+from app.crystal.lattice import find_nearest
+from app.tensor.kind import LABELS
+from app.tensor.lock import CellLock, explain_cells
+from app.tensor.pose import AXIS_LETTERS, Pose
+from app.tensor.printing import print_value
+from app.tensor.quadric import name_quadric
+from app.tensor.sentence import (
+    ON,
+    Place,
+    join_runs,
+    place_direction,
+    print_angle,
+    split_spread,
+    write_sentence,
+)
+from app.tensor.surface import SurfaceKind
+from app.tensor.surface_lines import choose_levels
+from app.tensor.values import compute_flux, compute_flux_angles, compute_rod_values, compute_values
+from app.web.overlay import draw_overlay
+from app.web.rendering import render_pose
+from app.web.scene import Subject
+from app.web.turning import Caught, View, names_of
+
+FloatArray = npt.NDArray[np.float64]
+
+REGION_FACTOR: Final = 1.96
+"""Half width of a 95 % interval in standard deviations: what the ± of an axis in a plane of symmetry holds."""
+
+
+def render_number(value: float, sigma: float | None) -> dict[str, str]:
+    """A printed number in three parts, so that columns align on the point: whole, rest, spread."""
+    printed = print_value(value, None if sigma is None or not np.isfinite(sigma) else sigma)
+    head, spread = split_spread(printed)
+    whole, point, rest = head.partition(".")
+    return {"text": printed, "whole": whole, "rest": point + rest, "spread": spread}
+
+
+def render_cells(subject: Subject, pose: Pose | None = None) -> list[list[dict[str, Any]]]:
+    """Nine cells in rows: label, state, reason, what it equals, and the number."""
+    estimate = subject.tensor.estimate
+    if pose is not None:
+        estimate = estimate.turn(pose.matrix, "specimen frame")
+    locks = explain_cells(subject.crystal, subject.tensor.form, None if pose is None else pose.matrix)
+    sigmas = estimate.sigma_matrix
+    cells = [
+        _render_cell(
+            LABELS[position] if pose is None else "xyz"[position // 3] + "xyz"[position % 3],
+            lock,
+            float(estimate.matrix.ravel()[position]),
+            None if sigmas is None else float(sigmas.ravel()[position]),
+        )
+        for position, lock in enumerate(locks)
+    ]
+    return [cells[0:3], cells[3:6], cells[6:9]]
+
+
+def _render_cell(label: str, lock: CellLock, value: float, sigma: float | None) -> dict[str, Any]:
+    number = render_number(0.0, None) if lock.state == "zero" else render_number(value, sigma)
+    return {"label": label, "state": lock.state, "because": lock.because, "equals": lock.equals, "number": number}
+
+
+def describe_subject(subject: Subject) -> dict[str, Any]:
+    """Everything that stays while the specimen is turned."""
+    values = subject.principal.values
+    return {
+        "hash": subject.key,
+        "unit": subject.unit,
+        "frame": subject.crystal.frame_sentence,
+        "cells": render_cells(subject),
+        "principal": _render_principal(subject),
+        "shape": subject.principal.shape,
+        "quadric": name_quadric(values),
+        "words": _describe_quadric(subject),
+        "mirrors": [_name_mirror(subject, normal) for normal in subject.mirrors],
+        "negative": bool(np.any(values < 0)),
+        "has_region": bool(subject.regions),
+        "step": _print_step(subject),
+    }
+
+
+def _print_step(subject: Subject) -> str:
+    values = subject.principal.values
+    return f"{choose_levels(float(values[2]), float(values[0]), 26).step:.6g}"
+
+
+def _name_mirror(subject: Subject, normal: FloatArray) -> str:
+    if subject.crystal.M is None:
+        return "x" + str(int(np.argmax(np.abs(normal))) + 1)
+    near = find_nearest(subject.crystal, normal, "row").text
+    letters = {"[1 0 0]": "a", "[0 1 0]": "b", "[0 0 1]": "c"}
+    return letters.get(near.replace("-", ""), typeset_indices(near))
+
+
+def _render_principal(subject: Subject) -> list[dict[str, Any]]:
+    principal, answer = subject.principal, []
+    for number in range(3):
+        sigma = None if principal.sigma is None else float(principal.sigma[number])
+        lines = [_say_arbitrary(subject, number)] if principal.arbitrary[number] else _say_axis(subject, number)
+        answer.append(
+            {
+                "name": str(number + 1),
+                "value": render_number(float(principal.values[number]), sigma)["text"],
+                "locked": subject.fixed[number] and not principal.arbitrary[number],
+                "lines": lines,
+            }
+        )
+    return answer
+
+
+def _say_arbitrary(subject: Subject, number: int) -> str:
+    if subject.principal.shape == "isotropic":
+        return "any direction"
+    alone = next(index for index in range(3) if not subject.principal.arbitrary[index])
+    return f"any direction in the plane across p{alone + 1}"
+
+
+def _say_axis(subject: Subject, number: int) -> list[str]:
+    axis = subject.principal.axes[number]
+    if subject.crystal.M is None:
+        return [place_direction(subject.crystal, axis).text]
+    row, plane = (find_nearest(subject.crystal, axis, kind) for kind in ("row", "normal"))
+    held = "held by symmetry: " if subject.fixed[number] else ""
+    named = []
+    for near in (row, plane):
+        shown = typeset_indices(near.text)
+        named.append(shown if near.off < ON else f"{shown} {print_angle(near.off)} off")
+    lines = [held + ", ".join(named)]
+    sigmas = subject.principal.axis_sigma
+    if not subject.fixed[number] and sigmas is not None:
+        turns = [
+            (other, REGION_FACTOR * float(sigmas[number, other]))
+            for other in range(3)
+            if other != number and np.isfinite(sigmas[number, other]) and sigmas[number, other] > 1e-9
+        ]
+        if turns:
+            lines.append(", ".join(f"±{print_angle(size)} toward p{other + 1}" for other, size in turns))
+    return lines
+
+
+def _describe_quadric(subject: Subject) -> str:
+    values, arbitrary = subject.principal.values, subject.principal.arbitrary
+    name = name_quadric(values)
+    if name == "none":
+        return "The tensor is zero: there is nothing to draw."
+    if np.any(values < 0):
+        return (
+            "The radius is 1/√|value|. Dashed lines over dots mark the sheet of negative values; between the sheets "
+            "the value passes through zero, and both are cut where they run to infinity."
+        )
+    if arbitrary[2]:
+        return "The radius is 1/√value, so the surface is shortest where the value is largest."
+    return "The radius is 1/√value, so the surface is longest along p3, where the value is smallest."
+
+
+def describe_pose(
+    subject: Subject, kind: SurfaceKind, pose: Pose, kept: dict[str, Any], view: View, caught: Caught | None = None
+) -> dict[str, Any]:
+    """Everything that changes with pose and view.
+
+    Args:
+        subject, kind: what is shown, with which surface.
+        pose: where the specimen stands.
+        kept: the pose as it is kept, which names directions that the user put an axis on.
+        view: from where one looks.
+        caught: what an axis lies on by the catch.
+    """
+    names = names_of(kept)
+    places = [place_direction(subject.crystal, pose.matrix[axis], names.get("xyz"[axis])) for axis in range(3)]
+    estimate = subject.tensor.estimate
+    values = compute_values(estimate.matrix, pose.matrix)
+    sigmas = estimate.value_sigma(pose.matrix)
+    numbers = [render_number(float(values[axis]), None if sigmas is None else float(sigmas[axis])) for axis in range(3)]
+    lines = write_sentence("z", places[2], pose.matrix[2], estimate, subject.principal, subject.unit, subject.other)
+    posed = estimate.turn(pose.matrix, "specimen frame")
+    labels = {
+        letter: {"value": numbers[axis]["text"], "place": places[axis].text if places[axis].indices else ""}
+        for axis, letter in enumerate(AXIS_LETTERS)
+    }
+    screen = view.screen(pose.matrix)
+    return {
+        "pose": {**render_pose(pose), "kept": kept},
+        "view": {"hold": view.hold, "matrix": view.matrix.tolist()},
+        "camera": {"eye": (2.0 * screen[2]).tolist(), "up": screen[1].tolist()},
+        "posed": posed.matrix.tolist(),
+        "cells": render_cells(subject, pose),
+        "along": _render_along(subject, pose, numbers),
+        "ruler": _render_ruler(subject, values),
+        "sentence": {"lines": [[list(run) for run in line] for line in lines], "text": join_runs(*lines)},
+        "where": _say_where(pose, kept, places),
+        "caught": None if caught is None else f"{caught.axis}: on {_typeset(caught.on)}",
+        "rest": f"z: {places[2].text}",
+        "overlay": draw_overlay(subject, subject.scene(kind), pose.matrix, view, labels),
+    }
+
+
+def _typeset(name: str) -> str:
+    return typeset_indices(name) if name[0] in "[(" else name
+
+
+def _render_along(subject: Subject, pose: Pose, numbers: list[dict[str, str]]) -> list[dict[str, Any]]:
+    estimate = subject.tensor.estimate
+    flux = compute_flux_angles(pose.matrix, compute_flux(estimate.matrix, pose.matrix))
+    rods, rod_sigmas = compute_rod_values(estimate.matrix, pose.matrix), estimate.rod_sigma(pose.matrix)
+    rows = []
+    for axis in range(3):
+        rod = None
+        if subject.other is not None and np.isfinite(rods[axis]):
+            rod = render_number(float(rods[axis]), None if rod_sigmas is None else float(rod_sigmas[axis]))
+        angle = f"{flux[axis]:.1f}°" if np.isfinite(flux[axis]) else "–"
+        rows.append({"axis": "xyz"[axis], "value": numbers[axis], "rod": rod, "flux": angle})
+    return rows
+
+
+def _render_ruler(subject: Subject, values: FloatArray) -> dict[str, Any]:
+    """A scale from the smallest to the largest value, with ticks; places are parts of its length."""
+    principal = subject.principal.values
+    spread = float(principal[0] - principal[2])
+    if spread <= 1e-9 * float(np.max(np.abs(principal))):
+        spread = max(abs(float(principal[0])), 1e-300)
+    low, high = float(principal[2]) - 0.04 * spread, float(principal[0]) + 0.04 * spread
+
+    def place(value: float) -> float:
+        return round((value - low) / (high - low), 4)
+
+    levels = choose_levels(low, high, 30)
+    ticks = [
+        {"at": place(float(value)), "text": f"{value:.6g}".replace("-", "−") if heavy else ""}
+        for value, heavy in zip(levels.values, levels.heavy, strict=True)
+    ]
+    return {
+        "ticks": ticks,
+        "principal": [
+            {"at": place(float(value)), "name": str(number + 1), "locked": subject.fixed[number]}
+            for number, value in enumerate(principal)
+        ],
+        "axes": [{"at": place(float(value)), "name": "xyz"[axis]} for axis, value in enumerate(values)],
+    }
+
+
+def _say_where(pose: Pose, kept: dict[str, Any], places: list[Place]) -> str:
+    """The specimen frame in words."""
+    z = f"z {places[2].text}"
+    if "from" in kept and isinstance(kept.get("toward"), str) and places[2].off >= ON:
+        z += f" toward {_print_given(kept['toward'])}"
+    near = kept.get("x", kept.get("toward")) if "from" in kept else None
+    if "exact" in kept and kept["exact"][0] == "z" and kept["toward"][0] == "x":
+        near = kept["toward"][1]
+    if isinstance(near, str):
+        return f"{z}, x as near {_print_given(near)} as it can be, y = z × x"
+    return f"{z}; x {places[0].text}; y = z × x"
+
+
+def _print_given(text: str) -> str:
+    direction = parse_direction(text)
+    if direction.kind == "row" or direction.kind == "normal":
+        return typeset_indices(format_indices(direction.kind, direction.values))
+    return text

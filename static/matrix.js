@@ -1,0 +1,99 @@
+// The two matrices, the sentence and the column: views as functions with an idempotent update.
+
+import { make } from "./overlay.js";
+
+/** @param {string} name @param {Record<string, string>} [set] @param {(Node|string)[]} [inner] */
+export const el = (name, set = {}, ...inner) => {
+  const element = document.createElement(name);
+  for (const [key, value] of Object.entries(set)) element.setAttribute(key, value);
+  element.append(...inner);
+  return element;
+};
+const lock = () => { const svg = make("svg", { class: "lock", viewBox: "0 0 12 14", "aria-hidden": "true" }); svg.append(make("path", { d: "M3 6.2V4a3 3 0 0 1 6 0v2.2" }), make("rect", { x: 1.2, y: 6.2, width: 9.6, height: 7, rx: 1 })); return svg; };
+/** @param {any} n */
+const number = (n) => [el("span", { class: "i" }, n.whole), el("span", { class: "f" }, n.rest, el("span", { class: "u" }, n.spread))];
+const byId = (/** @type {string} */ id) => /** @type {HTMLElement} */ (document.getElementById(id));
+const tags = /** @type {Record<string, string>} */ ({ symbol: "i", sub: "sub", value: "strong" });
+
+/** @param {any} answer */
+export function showPose(answer) {
+  byId("sentence").querySelectorAll("span.l1, span.l2").forEach((line, k) => line.replaceChildren(...answer.sentence.lines[k].map((/** @type {any} */ [text, role]) => (tags[role] ? el(tags[role], {}, text) : el("span", role === "plain" ? {} : { class: "nw" }, text)))));
+  byId("where").textContent = answer.where;
+  document.querySelectorAll("#specimen-matrix .cell").forEach((cell, k) => {
+    const content = answer.cells[Math.floor(k / 3)][k % 3];
+    cell.replaceChildren(...number(content.number));
+    cell.setAttribute("title", content.because);
+  });
+  byId("along").querySelectorAll("tbody tr").forEach((row, k) => {
+    const { value, rod, flux } = answer.along[k];
+    const cells = row.querySelectorAll("td");
+    cells[0].replaceChildren(...number(value));
+    cells[1].replaceChildren(...(rod ? number(rod) : ["–"]));
+    cells[2].textContent = flux;
+  });
+  showRuler(answer.ruler);
+}
+
+/** @param {any} ruler */
+function showRuler(ruler) {
+  const at = (/** @type {number} */ part) => 8 + 300 * part;
+  const parts = [make("path", { d: "M8 36H308V62H8Z" + ruler.ticks.map((/** @type {any} */ t) => `M${at(t.at)} 36v${t.text ? 9 : 4}`).join("") })];
+  for (const tick of ruler.ticks) if (tick.text) parts.push(make("text", { x: at(tick.at), y: 58 }, tick.text));
+  for (const p of ruler.principal) parts.push(make("path", { class: `mark${p.locked ? " locked" : ""}`, d: `M${at(p.at)} 17l5 5-5 5-5-5ZM${at(p.at)} 27v9` }), make("text", { class: `name${p.locked ? " locked" : ""}`, x: at(p.at), y: 12 }, `p${p.name}`));
+  for (const a of ruler.axes) parts.push(make("path", { class: "mark", d: `M${at(a.at)} 62l4 10h-8Z` }), make("text", { class: "name", x: at(a.at), y: 88 }, a.name));
+  byId("ruler").replaceChildren(...parts);
+}
+
+/** @param {any} subject */
+export function showSubject(subject) {
+  byId("frame-sentence").textContent = subject.frame;
+  for (const cell of subject.cells.flat()) {
+    const button = document.querySelector(`[data-cell="${cell.label}"]`);
+    if (!button) continue;
+    button.className = `cell ${cell.state}`;
+    button.setAttribute("aria-label", `cell ${cell.label}: ${cell.number.text}, ${cell.because}`);
+    if (cell.state === "zero") button.replaceChildren(el("span", { class: "i" }, "0"), el("span", { class: "f" }, lock()));
+    else button.replaceChildren(...number(cell.number), ...(cell.state === "tied" ? [el("span", { class: "eq" }, lock(), `= ${cell.equals}`)] : []));
+  }
+  byId("shape").textContent = subject.shape;
+  byId("quadric").textContent = subject.quadric;
+  byId("words").textContent = subject.words;
+  byId("region-note").hidden = !subject.has_region;
+  byId("principal").replaceChildren(...subject.principal.map((/** @type {any} */ p) => el("div", p.locked ? { class: "lk" } : {}, el("dt", {}, el("i", {}, "p"), el("sub", {}, p.name)), el("dd", {}, el("b", {}, p.value), el("span", {}, ...(p.locked ? [lock()] : []), [].concat(p.lines).join("; "))))));
+  const entry = (/** @type {any[]} */ paths, /** @type {string} */ text) => { const svg = make("svg", { viewBox: "0 0 46 14", "aria-hidden": "true" }); svg.append(...paths.map(([name, d]) => make("path", { class: name, d }))); return el("li", {}, svg, text); };
+  byId("key").replaceChildren(
+    entry([["axis", "M2 7h32"], ["head", "M46 7l-14-5 3 5-3 5z"]], "specimen"), entry([["crystal", "M2 7h33"], ["ring", "M35 7a5 5 0 1 0 10 0a5 5 0 1 0-10 0Z"]], "crystal"), entry([["principal", "M2 7h34"], ["diamond", "M40 1.5l5.5 5.5-5.5 5.5-5.5-5.5z"]], "principal"),
+    ...(subject.mirrors.length ? [entry([["mirror", "M2 7h42"]], `mirror across ${subject.mirrors.join(", ")}`)] : []), entry([["cross", "M2 3h42M2 11h42"], ["axis", "M2 7h42"]], `value, every ${subject.step}`));
+}
+
+/** Cells of the crystal frame: free ones are typed into, locked ones say why. @param {(label: string, text: string) => Promise<any>} take @param {() => any} subject */
+export function makeEditable(take, subject) {
+  const table = byId("crystal-matrix");
+  const find = (/** @type {string} */ label) => subject().cells.flat().find((/** @type {any} */ c) => c.label === label);
+  const tell = (/** @type {Event} */ event) => {
+    const button = /** @type {HTMLElement} */ (event.target)?.closest?.("[data-cell]");
+    if (!button) return;
+    table.querySelectorAll(".shown").forEach((other) => other.classList.remove("shown"));
+    const cell = find(/** @type {any} */ (button).dataset.cell);
+    byId("why").textContent = cell.state === "free" ? "" : cell.because;
+    if (cell.state !== "free") button.classList.add("shown");
+  };
+  table.addEventListener("focusin", tell);
+  table.addEventListener("mouseover", tell);
+  table.addEventListener("click", (event) => {
+    const button = /** @type {any} */ (event.target).closest("[data-cell]");
+    if (!button || find(button.dataset.cell).state !== "free") return;
+    const label = button.dataset.cell, old = find(label).number.text;
+    const input = /** @type {HTMLInputElement} */ (el("input", { class: "cell-input", "aria-label": `cell ${label}`, "aria-describedby": "hint", value: old }));
+    button.hidden = true;
+    button.after(input);
+    input.select();
+    byId("hint").textContent = `${label}: Enter takes it, Esc leaves ${old}`;
+    const leave = () => { input.remove(); button.hidden = false; byId("hint").textContent = ""; button.focus(); };
+    input.addEventListener("keydown", (key) => {
+      key.stopPropagation();
+      if (key.key === "Escape") leave();
+      if (key.key === "Enter") take(label, input.value).then(leave, (error) => { input.setAttribute("aria-invalid", "true"); byId("hint").textContent = `${error.message} ${error.hint ?? ""}`; });
+    });
+  });
+}

@@ -1,0 +1,72 @@
+// The one module that talks to the server over HTTP. Edits wait for each other, so that one is in flight at a time.
+
+/** What the server refused, or that it cannot be reached (status 0). */
+export class ServerError extends Error {
+  /** @param {number} status @param {{message: string, field?: string|null, hint?: string|null, detail?: any}} error */
+  constructor(status, error) {
+    super(error.message);
+    this.status = status;
+    this.field = error.field ?? null;
+    this.hint = error.hint ?? null;
+    this.detail = error.detail ?? null;
+  }
+}
+
+const GONE = {
+  message: "The server cannot be reached; what you typed is still here.",
+  hint: "Start Halfturn again, then take it once more.",
+};
+
+/**
+ * One request. @param {string} method @param {string} path @param {any} [body] @returns {Promise<any>}
+ * @throws {ServerError}
+ */
+async function ask(method, path, body) {
+  let answer;
+  try {
+    answer = await fetch(path, {
+      method,
+      headers: body === undefined ? {} : { "Content-Type": "application/json" },
+      body: body === undefined ? undefined : JSON.stringify(body),
+    });
+  } catch {
+    throw new ServerError(0, GONE);
+  }
+  let content = null;
+  try {
+    content = await answer.json();
+  } catch {
+    throw new ServerError(answer.status, { message: "The server's answer could not be read.", hint: "Reload the page." });
+  }
+  if (!answer.ok) throw new ServerError(answer.status, content?.error ?? GONE);
+  return content;
+}
+
+/** @type {Promise<any>} */
+let queue = Promise.resolve();
+
+/** Run a task when those before it are done, whatever became of them. @template T @param {() => Promise<T>} task @returns {Promise<T>} */
+export function enqueue(task) {
+  const turn = queue.then(task, task);
+  queue = turn.catch(() => undefined);
+  return turn;
+}
+
+const at = (/** @type {string} */ id) => `/api/samples/${encodeURIComponent(id)}`;
+
+/** @param {string} id @param {number} [revision] */
+export const fetchSample = (id, revision) => ask("GET", at(id) + (revision ? `?revision=${revision}` : ""));
+export const listSamples = () => ask("GET", "/api/samples");
+export const fetchProperties = () => ask("GET", "/api/properties");
+/** @param {{name?: string, from?: string}} body */
+export const createSample = (body) => ask("POST", "/api/samples", body);
+/** @param {string} id @param {string} name */
+export const renameSample = (id, name) => ask("POST", `${at(id)}/rename`, { name });
+/** @param {string} id @param {{archived?: boolean, deleted?: boolean}} body */
+export const markSample = (id, body) => ask("POST", `${at(id)}/mark`, body);
+/** @param {string} id @param {number} parent @param {object} change */
+export const postEdit = (id, parent, change) => ask("POST", `${at(id)}/edit`, { parent, change });
+/** @param {string} id @param {number} parent @param {"undo"|"redo"} way */
+export const postStep = (id, parent, way) => ask("POST", `${at(id)}/${way}`, { parent });
+/** A calculation call. @param {string} name @param {object} body */
+export const call = (name, body) => ask("POST", `/api/v1/${name}`, body);

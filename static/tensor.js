@@ -1,0 +1,126 @@
+// The front page: joins the kept sample, the live channel, the scene, the overlay and the matrices.
+
+import { openLive } from "./live.js";
+import { makeEditable, showPose, showSubject } from "./matrix.js";
+import { drawOverlay } from "./overlay.js";
+import { currentSample, edit, step } from "./page.js";
+import { makeScene, unpack } from "./scene.js";
+import * as turns from "./turn-state.js";
+
+const block = document.getElementById("tensor-content");
+if (block) start(JSON.parse(block.textContent ?? "{}"));
+
+/** @param {any} content */
+function start({ subject, first }) {
+  const byId = (/** @type {string} */ id) => /** @type {any} */ (document.getElementById(id));
+  const figure = byId("figure"), back = figure.querySelector(".back"), front = figure.querySelector(".front");
+  let state = turns.begin(subject.hash, first);
+  let last = first, waiting = /** @type {any} */ (null), saving = /** @type {any} */ (null), revision = currentSample().revision;
+  const startPose = state.pose;
+  const scene = makeScene(byId("plot"));
+  const paint = (/** @type {any} */ answer) => { last = answer; showPose(answer); drawOverlay(back, front, answer.overlay); scene.look(answer.camera); };
+  const paintSubject = (/** @type {any} */ given) => { subject = given; showSubject(given); };
+  const live = openLive({
+    onOpen: () => live.send({ type: "tensor", sample: currentSample().id, revision: currentSample().revision }),
+    onBinary: (data) => scene.show(unpack(data)),
+    onMessage: (answer) => {
+      if (answer.type === "subject") {
+        const same = answer.hash === state.hash;
+        state = { ...state, hash: answer.hash, answered: same ? state.answered : 0 };
+        paintSubject(answer);
+        live.send({ type: "surface", hash: state.hash, surface: state.surface });
+        request();
+      } else if (answer.type === "need") live.send({ type: "tensor", sample: currentSample().id, revision: currentSample().revision });
+      else if (answer.type === "error") { fault(`${answer.error.message} ${answer.error.hint ?? ""}`); waiting = null; }
+      else if (answer.type === "state") {
+        const before = state;
+        state = turns.receive(state, answer);
+        if (state === before) return;
+        requestAnimationFrame(() => { if (answer.seq === state.answered) paint(answer); });
+        if (waiting && answer.seq >= waiting.seq) { waiting = null; fault(""); save(answer); }
+      }
+    },
+  });
+  const fault = (/** @type {string} */ text) => { byId("turn-fault").textContent = text; byId("turn-fault").hidden = !text; };
+  function request(more = {}, keeps = false) {
+    const asked = turns.ask(state, more);
+    state = asked.state;
+    if (keeps) waiting = { seq: state.seq };
+    live.turn(asked.message);
+  }
+  function save(/** @type {any} */ answer) {
+    byId("said").textContent = answer.caught ?? answer.rest;
+    clearTimeout(saving);
+    saving = setTimeout(() => edit({ pose: answer.pose.kept }).catch((error) => fault(error.message)), 250);
+  }
+  document.addEventListener("sample", (event) => {
+    const sample = /** @type {CustomEvent} */ (event).detail;
+    if (sample.revision === revision) return;
+    revision = sample.revision;
+    if (!state.press && !waiting) state = { ...state, pose: sample.document.pose };
+    live.send({ type: "tensor", sample: sample.id, revision: sample.revision });
+  });
+  makeEditable((label, text) => edit({ free: { [label]: text } }), () => subject);
+
+  let from = [0, 0];
+  const unit = () => figure.querySelector(".stage").getBoundingClientRect().height / 2 / 1.2;
+  figure.addEventListener("pointerdown", (/** @type {PointerEvent} */ event) => {
+    if (event.button || !(/** @type {Element} */ (event.target).closest(".stage"))) return;
+    const what = /** @type {any} */ (event.target).dataset?.holdOn ?? "ground";
+    state = turns.press(state, what);
+    from = [event.clientX, event.clientY];
+    figure.setPointerCapture(event.pointerId);
+  });
+  figure.addEventListener("pointermove", (/** @type {PointerEvent} */ event) => {
+    if (!state.press) return;
+    state = turns.move(state, (event.clientX - from[0]) / unit(), (from[1] - event.clientY) / unit());
+    request();
+  });
+  const end = () => {
+    if (!state.press) return;
+    const turned = state.press.what !== "ground" && state.press.drag.some(Boolean);
+    request({}, turned);
+    state = turns.release(state);
+  };
+  figure.addEventListener("pointerup", end);
+  figure.addEventListener("pointercancel", end);
+
+  const choose = (/** @type {string} */ attribute, /** @type {string} */ value) => document.querySelectorAll(`[data-${attribute}]`).forEach((button) => button.setAttribute("aria-pressed", String(/** @type {any} */ (button).dataset[attribute] === value)));
+  const setSurface = (/** @type {string} */ kind) => { state = { ...state, surface: kind }; choose("surface", kind); live.send({ type: "surface", hash: state.hash, surface: kind }); request(); };
+  document.querySelectorAll("[data-surface]").forEach((b) => b.addEventListener("click", () => setSurface(/** @type {any} */ (b).dataset.surface)));
+  document.querySelectorAll("[data-hold]").forEach((b) => b.addEventListener("click", () => { const hold = /** @type {any} */ (b).dataset.hold; choose("hold", hold); request({ hold }); }));
+  const reset = () => { state = { ...state, pose: startPose, view: { hold: state.view.hold } }; request({}, true); };
+  byId("reset").addEventListener("click", reset);
+  byId("undo-turn").addEventListener("click", () => step("undo"));
+  const setCatch = (/** @type {boolean} */ on) => { state = { ...state, catching: on }; byId("catch").checked = on; byId("said").textContent = on ? "Gentle catch on" : "Gentle catch off"; };
+  byId("catch").addEventListener("change", (/** @type {any} */ event) => setCatch(event.target.checked));
+  const arrows = /** @type {Record<string, number[]>} */ ({ ArrowLeft: [-1, 0, 0], ArrowRight: [1, 0, 0], ArrowUp: [0, 1, 0], ArrowDown: [0, -1, 0], ",": [0, 0, -1], ".": [0, 0, 1] });
+  document.addEventListener("keydown", (event) => {
+    const target = /** @type {HTMLElement} */ (event.target);
+    if (target.closest("input, select, textarea, dialog") || event.ctrlKey || event.metaKey || event.altKey) return;
+    const surface = { q: "quadric", v: "value", f: "flux" }[event.key.toLowerCase()];
+    if (surface) setSurface(surface);
+    if (target !== figure) return;
+    const way = arrows[event.key];
+    if (way) {
+      event.preventDefault();
+      if (event.shiftKey) request({ look: [way[0] / 12, way[1] / 12] });
+      else request({ turn: { steps: way } }, true);
+    }
+    if (event.key === "Home") { event.preventDefault(); reset(); }
+    if (event.key.toLowerCase() === "c") setCatch(!state.catching);
+  });
+  const onForm = (/** @type {string} */ id, /** @type {(f: any) => void} */ act) => byId(id).addEventListener("submit", (/** @type {Event} */ event) => { event.preventDefault(); act(byId(id).elements); });
+  const number = (/** @type {any} */ field) => Number(field.value.replace("−", "-"));
+  const typed = (/** @type {any} */ pose) => { request({ pose }, true); };
+  onForm("put", (f) => request({ put: { axis: byId("put-axis").value, on: f.on.value } }, true));
+  onForm("put-two", (f) => request({ put: { axis: "z", on: f.on.value, toward: ["x", f.toward.value] } }, true));
+  onForm("tilt", (f) => typed({ from: f.from.value, tilt: number(f.tilt), toward: f.toward.value }));
+  onForm("bunge", (f) => typed({ bunge: [number(f.phi1), number(f.PHI), number(f.phi2)] }));
+  paintSubject(subject);
+  paint(first);
+  const loaded = () => { if (/** @type {any} */ (window).Plotly) live.send({ type: "surface", hash: state.hash, surface: state.surface }); };
+  window.addEventListener("load", loaded);
+  matchMedia("(prefers-color-scheme: dark)").addEventListener("change", () => loaded());
+  void last;
+}

@@ -1,0 +1,55 @@
+"""The live channel: absolute turns, hashes, and answers checked against plain numpy."""
+
+from __future__ import annotations
+
+import numpy as np
+import pytest
+
+from app.errors import InputError
+from app.store.demonstration import demonstration_documents
+from app.web.live import Subjects, TurnMessage, answer_turn, read_message
+
+SUBJECT = Subjects().take(demonstration_documents()[0])
+START = demonstration_documents()[0].plain()["pose"]
+
+
+def ask(**more: object) -> dict[str, object]:
+    message = {"type": "turn", "hash": SUBJECT.key, "seq": 1, "pose": START, **more}
+    return answer_turn(SUBJECT, TurnMessage.model_validate(message))
+
+
+def test_the_posed_matrix_is_the_turned_one_after_a_drag() -> None:
+    answer = ask(turn={"drag": [0.4, -0.2]})
+    pose = np.array(answer["pose"]["matrix"])  # type: ignore[index]
+    matrix = np.array([[13.2, 0, 1.85], [0, 24.6, 0], [1.85, 0, 15.9]])
+    np.testing.assert_allclose(answer["posed"], pose @ matrix @ pose.T, atol=1e-9)
+    assert not np.allclose(pose, np.array(ask()["pose"]["matrix"]), atol=1e-3)  # type: ignore[index]
+
+
+def test_looking_moves_the_camera_and_no_number() -> None:
+    still, looked = ask(), ask(look=[0.5, 0.3])
+    for key in ("pose", "posed", "cells", "along", "sentence", "where"):
+        assert looked[key] == still[key]
+    assert looked["camera"] != still["camera"]
+
+
+def test_exchanging_what_is_held_leaves_the_picture() -> None:
+    still, held = ask(), ask(hold="crystal")
+    np.testing.assert_allclose(held["camera"]["eye"], still["camera"]["eye"], atol=1e-12)  # type: ignore[index]
+
+
+def test_a_direction_put_under_z_is_named() -> None:
+    answer = ask(put={"axis": "z", "on": "(-2 0 1)"})
+    assert answer["sentence"]["text"].startswith("Along z, on n(−201):")  # type: ignore[index]
+
+
+def test_the_catch_draws_z_to_a_low_normal() -> None:
+    near = {"from": "(-2 0 1)", "tilt": 0.5, "toward": "[0 1 0]"}
+    answer = ask(pose=near, turn={"drag": [0.0, 0.0]}, catch=True)
+    assert answer["caught"] == "z: on n(−201)"
+    assert ask(pose=near, turn={"drag": [0.0, 0.0]})["caught"] is None
+
+
+def test_an_unknown_message_is_refused() -> None:
+    with pytest.raises(InputError):
+        read_message('{"type": "dance"}')
