@@ -20,7 +20,7 @@ from app.web.samples import list_samples, render_summary, store_of
 
 router = APIRouter(include_in_schema=False)
 
-PAGES = (("tensor", "Tensor"), ("sheet", "Sheet"))
+PAGES = (("tensor", "Tensor"), ("readings", "Readings"), ("sheet", "Sheet"))
 """The pages of a sample that are there, in the order of the way through it."""
 
 

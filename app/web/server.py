@@ -9,7 +9,17 @@ from starlette.middleware import Middleware
 
 from app.store import open_store
 from app.version import VERSION
-from app.web import calculation, error_answers, live, pages, samples, sheet_page, static_files, tensor_page
+from app.web import (
+    calculation,
+    error_answers,
+    live,
+    pages,
+    readings_page,
+    samples,
+    sheet_page,
+    static_files,
+    tensor_page,
+)
 from app.web.answers import JsonAnswer
 from app.web.resources import static_folder
 from app.web.security import AnswerHeaders, BodyLimit, LoopbackOnly
@@ -53,6 +63,7 @@ def create_app(data_dir: Path | None = None) -> FastAPI:
     app.include_router(samples.router)
     app.include_router(tensor_page.router)
     app.include_router(live.router)
+    app.include_router(readings_page.router)
     app.include_router(sheet_page.router)
     app.include_router(calculation.router)
     app.include_router(static_files.router)
