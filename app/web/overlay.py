@@ -182,7 +182,9 @@ def _draw_crystal(subject: Subject, scene: Scene, screen: FloatArray, marks: lis
 
 def _draw_principal(subject: Subject, scene: Scene, screen: FloatArray, marks: list[Shape], texts: list[Shape]) -> None:
     principal = subject.principal
-    longest = int(np.argmin(np.abs(principal.values))) if scene.kind == "quadric" else -1
+    # The remark belongs to the ellipsoid: an open sheet has no longest axis.
+    closed = scene.kind == "quadric" and bool(np.all(principal.values > 0))
+    longest = int(np.argmin(principal.values)) if closed else -1
     said = False
     for number in range(3):
         if principal.arbitrary[number]:
@@ -218,4 +220,6 @@ def _label(texts: list[Shape], name: str, point: FloatArray, runs: list[list[str
     way = flat / size if size > 0.05 else np.array([0.7, -0.7])
     x, y = to_drawing(point) + way * away
     anchor = "middle" if abs(way[0]) < 0.45 else ("start" if way[0] > 0 else "end")
+    if any("letter" in other["class"] and abs(other["x"] - x) < 28 and abs(other["y"] - y - 5) < 16 for other in texts):
+        y -= 22
     texts.append(_text(name, float(x), float(y) + 5, runs, anchor))
