@@ -2,7 +2,18 @@
 
 from __future__ import annotations
 
+import io
+import re
+from typing import Any
+
+import httpx
+import numpy as np
+import pytest
+from axe_playwright_python.sync_playwright import Axe
+from PIL import Image
 from playwright.sync_api import Page, expect
+
+from tests.processes import Served
 
 
 def test_a_free_cell_is_edited_and_the_tied_one_follows(page: Page) -> None:
@@ -26,3 +37,158 @@ def test_looking_changes_no_number_and_turning_does(page: Page) -> None:
     assert page.inner_text("#specimen-matrix") == matrix
     page.keyboard.press("ArrowLeft")
     page.wait_for_function("m => document.querySelector('#specimen-matrix').innerText !== m", arg=matrix)
+
+
+def open_copy(page: Page, served: Served, group: str = "2/m") -> str:
+    """Open a fresh copy of a demonstration sample, so that the tests do not see each other's changes."""
+    listed = httpx.get(f"{served.url}api/samples").json()
+    source = next(entry["id"] for entry in listed if entry["group"] == group)
+    made = str(httpx.post(f"{served.url}api/samples", json={"from": source}).json()["id"])
+    page.goto(f"/samples/{made}/tensor", wait_until="networkidle")
+    page.wait_for_timeout(800)
+    return made
+
+
+def fetch(served: Served, sample: str) -> Any:
+    return httpx.get(f"{served.url}api/samples/{sample}").json()
+
+
+def wait_for_revision(page: Page, served: Served, sample: str, beyond: int) -> Any:
+    for _ in range(60):
+        found = fetch(served, sample)
+        if found["revision"] > beyond:
+            return found
+        page.wait_for_timeout(100)
+    raise AssertionError("the turn was not saved")
+
+
+def shown_matrix(page: Page) -> np.ndarray:
+    texts = page.locator("#specimen-matrix .cell").all_inner_texts()
+    plain = [re.sub(r"\(.*?\)|\s", "", text).replace("−", "-") for text in texts]
+    return np.array([float(text) for text in plain]).reshape(3, 3)
+
+
+def hold_at(page: Page, what: str) -> tuple[float, float]:
+    """A place on the screen where the drawing can be taken hold of."""
+    place = page.evaluate(
+        """what => { for (const path of document.querySelectorAll(`svg.front path[data-hold-on='${what}']`)) {
+             const length = path.getTotalLength(), matrix = path.getScreenCTM();
+             for (let part = 0.1; part < 1; part += 0.1) {
+               const at = path.getPointAtLength(length * part).matrixTransform(matrix);
+               if (document.elementFromPoint(at.x, at.y)?.dataset?.holdOn === what) return [at.x, at.y];
+             } } return null; }""",
+        what,
+    )
+    assert place is not None, what
+    return place[0], place[1]
+
+
+def drag(page: Page, start: tuple[float, float], right: float, down: float) -> None:
+    page.mouse.move(*start)
+    page.mouse.down()
+    for part in range(1, 9):
+        page.mouse.move(start[0] + right * part / 8, start[1] + down * part / 8)
+        page.wait_for_timeout(30)
+    page.mouse.up()
+
+
+def test_dragging_the_block_turns_it_and_the_matrix_is_c_t_ct(page: Page, served: Served) -> None:
+    sample = open_copy(page, served)
+    before = fetch(served, sample)
+    drag(page, hold_at(page, "block"), 60, 25)
+    after = wait_for_revision(page, served, sample, before["revision"])
+    state = after["derived"]["state"]
+    turn, tensor = np.array(state["pose"]["matrix"]), np.array(state["matrix"])
+    assert not np.allclose(turn, before["derived"]["state"]["pose"]["matrix"])
+    assert turn @ turn.T == pytest.approx(np.eye(3), abs=1e-9)
+    page.wait_for_timeout(400)
+    # Printed to the digits of its uncertainty, so within half of the last one shown.
+    assert shown_matrix(page) == pytest.approx(turn @ tensor @ turn.T, abs=0.06)
+    assert f"{(turn @ tensor @ turn.T)[2, 2]:.2f}" in page.inner_text("#sentence")
+
+
+def test_dragging_the_ground_moves_no_number(page: Page, served: Served) -> None:
+    sample = open_copy(page, served)
+    before, matrix, sentence = fetch(served, sample)["revision"], shown_matrix(page), page.inner_text("#sentence")
+    box = page.locator(".stage").bounding_box()
+    assert box is not None
+    drawn = page.inner_html("svg.front")
+    drag(page, (box["x"] + 12, box["y"] + box["height"] - 60), 70, -30)
+    page.wait_for_timeout(500)
+    assert page.inner_html("svg.front") != drawn
+    assert np.array_equal(shown_matrix(page), matrix)
+    assert page.inner_text("#sentence") == sentence
+    assert fetch(served, sample)["revision"] == before
+
+
+def test_a_direction_is_put_under_z_and_all_is_there_after_a_reload(page: Page, served: Served) -> None:
+    sample = open_copy(page, served)
+    before = fetch(served, sample)["revision"]
+    page.fill("#put-on", "(1 1 1)")
+    page.keyboard.press("Enter")
+    wait_for_revision(page, served, sample, before)
+    expect(page.locator("#sentence")).to_contain_text("on n(111)")
+    matrix, sentence = shown_matrix(page), page.inner_text("#sentence")
+    page.reload(wait_until="networkidle")
+    assert np.array_equal(shown_matrix(page), matrix)
+    assert page.inner_text("#sentence") == sentence
+
+
+def test_a_bad_direction_gets_its_sentence_and_stays(page: Page, served: Served) -> None:
+    open_copy(page, served)
+    page.fill("#put-on", "{100}")
+    page.keyboard.press("Enter")
+    expect(page.locator("#turn-fault")).to_contain_text("a set of equivalent planes")
+    expect(page.locator("#put-on")).to_have_value("{100}")
+
+
+def test_without_the_plotting_script_it_reads_and_turns(page: Page, served: Served) -> None:
+    page.route("**/plotly*", lambda route: route.fulfill(status=200, content_type="text/javascript", body=""))
+    sample = open_copy(page, served)
+    before = fetch(served, sample)["revision"]
+    assert re.search(r"Along z, .*\d\(\d+\)", page.inner_text("#sentence"))
+    page.focus("#figure")
+    page.keyboard.press("ArrowLeft")
+    wait_for_revision(page, served, sample, before)
+
+
+@pytest.mark.parametrize("direction", ["(0 0 1)", "(1 0 0)", "(1 1 1)", "[1 2 -1]"])
+def test_overlay_and_scene_agree_in_rendered_pixels(page: Page, served: Served, direction: str) -> None:
+    # The drawn outline against the silhouette of what plotly rendered, without the overlay.
+    sample = open_copy(page, served)
+    before = fetch(served, sample)["revision"]
+    page.fill("#put-on", direction)
+    page.keyboard.press("Enter")
+    wait_for_revision(page, served, sample, before)
+    page.wait_for_timeout(1200)
+    outline = page.evaluate(
+        "(() => { const b = document.querySelector('svg.front path.outline').getBoundingClientRect();"
+        " return [b.left, b.top, b.right, b.bottom]; })()"
+    )
+    page.add_style_tag(content="svg.draw{visibility:hidden!important} figcaption,.said{visibility:hidden!important}")
+    stage = page.locator(".stage").bounding_box()
+    assert stage is not None
+    picture = Image.open(io.BytesIO(page.screenshot(clip=stage))).convert("RGB")
+    pixels = np.asarray(picture, dtype=int)
+    inked = np.max(np.abs(pixels - pixels[2, 2]), axis=2) > 3
+    rows, columns = np.flatnonzero(inked.any(axis=1)), np.flatnonzero(inked.any(axis=0))
+    seen = [columns[0] + stage["x"], rows[0] + stage["y"], columns[-1] + 1 + stage["x"], rows[-1] + 1 + stage["y"]]
+    assert seen == pytest.approx(outline, abs=4)
+
+
+@pytest.mark.parametrize("width", [390, 1024, 2560])
+def test_it_fits_and_has_no_accessibility_violation(page: Page, served: Served, width: int) -> None:
+    page.set_viewport_size({"width": width, "height": 900})
+    open_copy(page, served)
+    assert page.evaluate("document.documentElement.scrollWidth - window.innerWidth") <= 1
+    assert [violation["id"] for violation in Axe().run(page).response["violations"]] == []
+
+
+def test_the_hyperboloid_and_the_other_surfaces_draw(page: Page, served: Served) -> None:
+    open_copy(page, served, "mmm")
+    expect(page.locator("#quadric")).to_have_text("one-sheet hyperboloid")
+    page.focus("#figure")
+    for key in ("v", "f", "q"):
+        page.keyboard.press(key)
+        page.wait_for_timeout(500)
+    expect(page.locator("[data-surface='quadric']")).to_have_attribute("aria-pressed", "true")
