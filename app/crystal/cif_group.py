@@ -197,11 +197,19 @@ def _find_entry(text: str, cell: list[float]) -> gemmi.SpaceGroup | None:
     if not 2 <= len(plain) <= 60 or not plain[0].isalpha():
         return None
     letter, *words = plain.split()
-    for spelled in (plain, " ".join([letter, *shorten_symbol(words)])):
-        entry = gemmi.find_spacegroup_by_name(spelled, cell[3], cell[5])
-        if entry is not None:
-            return entry
-    return None
+    entry = _look_up(plain, cell)
+    if entry is None:
+        entry = _look_up(" ".join([letter, *shorten_symbol(words)]), cell)
+        # Shortened, A 21/n would be A n: another class. Only symbols with more than one kind of axis have a short form.
+        return None if entry is not None and entry.crystal_system_str() == "monoclinic" else entry
+    # The tables run P 3 2 together to P 32, a screw axis; whoever parts the two may mean half-turns across the axis.
+    parted = len(words) == 2 and all(word.isdigit() for word in words)
+    return None if parted and entry.hm.split()[1:] != words else entry
+
+
+def _look_up(symbol: str, cell: list[float]) -> gemmi.SpaceGroup | None:
+    """The table entry of one spelling; where axes are not stated, alpha and gamma choose them."""
+    return gemmi.find_spacegroup_by_name(symbol, cell[3], cell[5])
 
 
 def _read_space_group_number(block: gemmi.cif.Block, unread: list[str]) -> int | None:

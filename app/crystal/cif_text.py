@@ -19,10 +19,6 @@ BLOCK_LIMIT: Final = 10_000
 TEXT_LIMIT: Final = 300
 
 CELL_NAMES: Final = ("length_a", "length_b", "length_c", "angle_alpha", "angle_beta", "angle_gamma")
-OPERATION_NAMES: Final = (
-    ("_space_group_symop_operation_xyz", "_space_group_symop.operation_xyz"),
-    ("_symmetry_equiv_pos_as_xyz", "_symmetry_equiv.pos_as_xyz"),
-)
 
 _NUMBER: Final = re.compile(r"([+-]?)([0-9]*)(?:\.([0-9]*))?(?:[eE]([+-]?[0-9]{1,3}))?(?:\(([0-9]+)\))?")
 _PLACE: Final = re.compile(r"[a-z]*:(\d+)(?::\d+\(\d+\))?(?: in [^:]*)?: *(.*)", re.DOTALL)

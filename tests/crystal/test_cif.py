@@ -409,6 +409,31 @@ def test_an_unknown_symbol_alone_is_refused_by_name() -> None:
     assert error.field == "group" and "Q 1 2 3" in error.message
 
 
+@pytest.mark.parametrize("symbol", ["A 21/n", "C 21/c", "F 2/d", "I 21/a", "B 21/b"])
+def test_a_monoclinic_symbol_outside_the_tables_is_not_read_as_its_glide_plane_alone(symbol) -> None:
+    # 2/m and m differ in every axial tensor: A 21/n without its screw axis would be A n, of class m.
+    error = refused(write_cif(MONOCLINIC_B, f"_symmetry_space_group_name_H-M '{symbol}'"))
+    assert error.field == "group" and symbol in error.message
+    lines = [f"_symmetry_space_group_name_H-M '{symbol}'", write_operations(B_OPERATIONS)]
+    found = read_cif(write_cif(MONOCLINIC_B, *lines))
+    assert found.group == "P 1 21/c 1" and has_note(found, symbol, "passed over")
+
+
+@pytest.mark.parametrize("symbol", ["P 3 2", "P 3 1", "P 4 2", "P 6 2", "I 4 1"])
+def test_digits_that_stand_apart_are_not_run_together_to_a_screw_axis(symbol) -> None:
+    # P 3 2 may be the screw axis 3₂ (class 3) or a half-finished P 3 2 1 (class 32), and their tensors differ.
+    error = refused(write_cif((5, 5, 7, 90, 90, 120), f"_symmetry_space_group_name_H-M '{symbol}'"))
+    assert error.field == "group" and symbol in error.message
+
+
+@pytest.mark.parametrize(("symbol", "cell"), [("R 3 2", HEXAGONAL), ("P 2 3", CUBIC), ("P32", HEXAGONAL)])
+def test_digits_that_are_parts_of_the_symbol_are_read(symbol, cell) -> None:
+    # Classes as in International Tables A: R 3 2 is 32, P 2 3 is 23, P 3₂ is 3.
+    orders = {"R 3 2": 6, "P 2 3": 12, "P32": 3}
+    found = read_cif(write_cif(cell, f"_symmetry_space_group_name_H-M '{symbol}'"))
+    assert len(found.build().operations) == orders[symbol]
+
+
 def test_a_magnetic_group_alone_is_refused_and_beside_another_is_told() -> None:
     magnetic = "_space_group_magn.number_BNS 14.75"
     assert refused(write_cif(MONOCLINIC_B, magnetic)).field == "group"

@@ -108,6 +108,56 @@ def test_a_centred_cubic_cell_on_primitive_axes() -> None:
     assert result.misfit < 1e-12
 
 
+def test_an_anisotropic_tensor_on_primitive_axes_of_a_face_centred_cell() -> None:
+    # A rhombohedral crystal whose cell happens to be cubic: 7 along [1 1 1] and 3 across it, on both sets of axes.
+    # [1 1 1] of the cubic cell is [1 1 1] of the primitive one, and [0 1 -1] is [0 -1 1] (by hand, from the halves).
+    old = build_crystal([5.64, 5.64, 5.64, 90, 90, 90], "R -3 m:R")
+    edge = 5.64 / np.sqrt(2)
+    new = build_crystal([edge, edge, edge, 60, 60, 60], "-3m")
+    basis = np.array([[0, 0.5, 0.5], [0.5, 0, 0.5], [0.5, 0.5, 0]])
+    axis = old.resolve(Direction("row", (1.0, 1.0, 1.0)))
+    tensor = build_tensor(old, Kind(), matrix=3.0 * np.eye(3) + 4.0 * np.outer(axis, axis))
+    assert tensor.misfit < 1e-12
+    result = convert_tensor(old, tensor, new, basis)
+    assert value_along_row(new, result.matrix, np.array([1, 1, 1])) == pytest.approx(7.0)
+    assert value_along_row(new, result.matrix, np.array([0, -1, 1])) == pytest.approx(3.0)
+    # A cube's edge lies at cos² = 1/3 from the body diagonal; on the new axes it is −a + b + c.
+    assert value_along_row(new, result.matrix, np.array([-1, 1, 1])) == pytest.approx(3.0 + 4.0 / 3.0)
+    assert result.removed < 1e-9
+
+
+def test_the_same_crystal_relabelled() -> None:
+    # W1: invented data; the answer was computed apart from this project. (a' b' c') = (c a b), unique axis c.
+    new = build_crystal([5.7981, 12.214, 3.0371, 90, 90, 103.83], "2/m", unique_axis="c")
+    basis = np.array([[0, 1, 0], [0, 0, 1], [1, 0, 0]])
+    result = convert_tensor(MONOCLINIC, monoclinic_tensor(), new, basis)
+    assert result.matrix == pytest.approx(np.array([[15.9, 1.85, 0], [1.85, 13.2, 0], [0, 0, 24.6]]), abs=1e-9)
+    normal = new.resolve(Direction("normal", (1.0, -2.0, 0.0)))
+    assert normal @ result.matrix @ normal == pytest.approx(13.195526, abs=5e-7)
+    # And its second frame, x1 = a, x3 = c*, of the old cell.
+    second = build_crystal(CELL, "2/m", frame="x1=a x3=c*")
+    turned = convert_tensor(MONOCLINIC, monoclinic_tensor(), second, np.eye(3)).matrix
+    assert turned[[0, 1, 2, 0], [0, 1, 2, 2]] == pytest.approx([12.495467, 24.6, 16.604533, 1.011876], abs=5e-7)
+
+
+@pytest.mark.parametrize(
+    ("basis", "expected"),
+    [
+        # By hand: a quarter-turn about c exchanges 11 and 22 and reverses 12; a half-turn about [1 1 0] exchanges
+        # 11 and 22 and keeps 12. Both are proper, so the axial tensor takes no sign of its own.
+        ([[0, -1, 0], [1, 0, 0], [0, 0, 1]], [[-2.0, -1.5, 0], [-1.5, 2.0, 0], [0, 0, 0]]),
+        ([[0, 1, 0], [1, 0, 0], [0, 0, -1]], [[-2.0, 1.5, 0], [1.5, 2.0, 0], [0, 0, 0]]),
+    ],
+)
+def test_an_axial_tensor_takes_no_sign(basis: list[list[int]], expected: list[list[float]]) -> None:
+    # W7's tensor: invented data, 11 = 2, 22 = −2, 12 = 1.5 in class −4.
+    crystal = build_crystal([5, 5, 7, 90, 90, 90], "-4")
+    tensor = build_tensor(crystal, Kind("axial"), free={"11": 2.0, "12": 1.5})
+    result = convert_tensor(crystal, tensor, crystal, basis)
+    assert result.matrix == pytest.approx(np.array(expected), abs=1e-12)
+    assert result.removed < 1e-9
+
+
 def test_the_audit_adds_up_and_names_free_cells() -> None:
     new = build_crystal(CELL, "2/m", frame="x1=a x3=c*")
     result = convert_tensor(MONOCLINIC, monoclinic_tensor(), new, np.eye(3))
@@ -181,6 +231,60 @@ def test_a_monoclinic_cell_that_can_be_matched_in_two_ways() -> None:
     matrices = [entry.matrix for entry in list_candidates(crystal, tensor, crystal)]
     kinds = {tuple(np.round(matrix, 6).ravel()) for matrix in matrices}
     assert len(kinds) == 2
+
+
+def test_the_simplest_of_equally_good_candidates_comes_first() -> None:
+    # An orthorhombic cell onto itself: identity and three half-turns fit equally well; fewest minus signs first.
+    crystal = build_crystal([5, 6, 7, 90, 90, 90], "mmm")
+    tensor = build_tensor(crystal, Kind(), free={"11": 1.0, "22": 2.0, "33": 3.0})
+    found = list_candidates(crystal, tensor, crystal)
+    assert np.diag(found[0].basis).tolist() == [1, 1, 1]
+    assert {tuple(np.diag(entry.basis)) for entry in found} == {(1, 1, 1), (1, -1, -1), (-1, 1, -1), (-1, -1, 1)}
+    assert all(entry.misfit < 1e-12 for entry in found)
+    # A cubic cell onto itself: the 24 turns of the cube.
+    cubic = build_crystal([5, 5, 5, 90, 90, 90], "m-3m")
+    assert len(list_candidates(cubic, build_tensor(cubic, Kind(), free={"11": 1.0}), cubic)) == 24
+
+
+def test_cells_that_do_not_match_have_no_candidates() -> None:
+    other = build_crystal([9, 9, 9, 90, 90, 90], "m-3m")
+    assert list_candidates(MONOCLINIC, monoclinic_tensor(), other) == ()
+
+
+def test_a_basis_that_does_not_fit_is_refused_with_those_that_do() -> None:
+    with pytest.raises(InputError) as caught:
+        convert_tensor(MONOCLINIC, monoclinic_tensor(), MONOCLINIC, np.diag([2.0, 1.0, 1.0]))
+    error = caught.value
+    # By hand: the first edge doubles, so its square changes by 4 − 1 times itself.
+    assert error.detail["misfit"] == pytest.approx(3.0)
+    assert error.detail["candidates"][0]["basis"] == np.eye(3).tolist()
+    assert "300 %" in error.message
+
+
+@pytest.mark.parametrize(("change", "taken"), [(0.0199, True), (0.0201, False), (-0.0199, True), (-0.0201, False)])
+def test_the_limit_lies_at_two_per_cent(change: float, taken: bool) -> None:
+    # By hand: the old square of the edge is (1 + change) times the new one, so the misfit is |change|.
+    crystal = build_crystal([5 * np.sqrt(1 + change), 6, 7, 90, 90, 90], "mmm")
+    new = build_crystal([5, 6, 7, 90, 90, 90], "mmm")
+    tensor = build_tensor(crystal, Kind(), free={"11": 1.0, "22": 2.0, "33": 3.0})
+    assert bool(list_candidates(crystal, tensor, new)) == taken
+    if taken:
+        assert convert_tensor(crystal, tensor, new, np.eye(3)).misfit == pytest.approx(abs(change))
+    else:
+        with pytest.raises(InputError, match="more than 2 %"):
+            convert_tensor(crystal, tensor, new, np.eye(3))
+
+
+def test_a_limiting_group_has_no_axes_to_change() -> None:
+    limiting = build_crystal(None, "∞m")
+    tensor = build_tensor(limiting, Kind(), free={"11": 1.0, "33": 2.0})
+    for ask in (
+        lambda: convert_tensor(limiting, tensor, MONOCLINIC, np.eye(3)),
+        lambda: list_candidates(limiting, tensor, MONOCLINIC),
+    ):
+        with pytest.raises(InputError) as caught:
+            ask()
+        assert caught.value.field == "from"
 
 
 REFUSED = {
