@@ -68,6 +68,13 @@ function reload() {
 
 /** Change one thing; the promise fails with a ServerError whose field says where. @param {object} change @returns {Promise<any>} */
 export const edit = (change) => run(() => postEdit(state.sample.id, state.sample.revision, change));
+/** Send a change of another form whose answer carries the new sample; gives the whole answer.
+ * @param {(id: string, revision: number) => Promise<any>} send @returns {Promise<any>} */
+export async function take(send) {
+  let answer;
+  await run(async () => { answer = await send(state.sample.id, state.sample.revision); return answer.sample; });
+  return answer;
+}
 /** @param {"undo"|"redo"} way */
 export const step = (way) => run(() => postStep(state.sample.id, state.sample.revision, way)).catch((error) => tell([error.message]));
 

@@ -68,5 +68,11 @@ export const markSample = (id, body) => ask("POST", `${at(id)}/mark`, body);
 export const postEdit = (id, parent, change) => ask("POST", `${at(id)}/edit`, { parent, change });
 /** @param {string} id @param {number} parent @param {"undo"|"redo"} way */
 export const postStep = (id, parent, way) => ask("POST", `${at(id)}/${way}`, { parent });
+/** @param {string} id */
+export const fetchReadings = (id) => ask("GET", `${at(id)}/readings`);
+/** @param {string} id @param {number} parent @param {object[]} rows @param {Record<string, string>} batches */
+export const postReadings = (id, parent, rows, batches) => ask("POST", `${at(id)}/readings`, { parent, rows, batches });
+/** @param {string} id @param {number} parent @param {string} text */
+export const postTable = (id, parent, text) => ask("POST", `${at(id)}/readings/table`, { parent, text });
 /** A calculation call. @param {string} name @param {object} body */
 export const call = (name, body) => ask("POST", `/api/v1/${name}`, body);

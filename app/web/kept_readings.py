@@ -22,11 +22,12 @@ def take_readings(crystal: Crystal, kept: Sequence[KeptReading]) -> list[Reading
     Raises:
         InputError: a direction or pose that cannot be read, at ``readings[i]``.
     """
-    return [
-        _take_reading(crystal, entry, f"readings[{index}]")
-        for index, entry in enumerate(kept)
-        if entry.set_aside is None
-    ]
+    return [reading for reading, entry in zip(take_all(crystal, kept), kept, strict=True) if entry.set_aside is None]
+
+
+def take_all(crystal: Crystal, kept: Sequence[KeptReading]) -> list[Reading]:
+    """All the readings, those set aside included. Raises InputError as ``take_readings`` does."""
+    return [_take_reading(crystal, entry, f"readings[{index}]") for index, entry in enumerate(kept)]
 
 
 def _take_reading(crystal: Crystal, kept: KeptReading, field: str) -> Reading:
@@ -81,5 +82,5 @@ def _spell(direction: Direction) -> Any:
 
 
 def write_readings(crystal: Crystal, kept: Sequence[KeptReading], unit: str) -> str:
-    """The readings as a table to edit."""
+    """The readings in use as a table to edit."""
     return write_table(take_readings(crystal, kept), unit)

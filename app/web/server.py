@@ -15,6 +15,7 @@ from app.web import (
     live,
     pages,
     readings_page,
+    readings_table,
     samples,
     sheet_page,
     static_files,
@@ -64,6 +65,7 @@ def create_app(data_dir: Path | None = None) -> FastAPI:
     app.include_router(tensor_page.router)
     app.include_router(live.router)
     app.include_router(readings_page.router)
+    app.include_router(readings_table.router)
     app.include_router(sheet_page.router)
     app.include_router(calculation.router)
     app.include_router(static_files.router)

@@ -107,7 +107,7 @@ def test_a_table_against_an_old_revision_is_not_taken(client: TestClient) -> Non
     table = (EXAMPLES / "readings.csv").read_text("utf-8")
     post(client, sample, table)
     again = post(client, sample, table.replace("13.31", "14.31"))
-    assert again.status_code == 422
+    assert again.status_code == 409
     assert "14.31" in again.text
     assert all(reading["value"] != 14.31 for reading in take(client)["document"]["readings"])
 
