@@ -1,6 +1,7 @@
 // The two matrices, the sentence and the column: views as functions with an idempotent update.
 
 import { make } from "./overlay.js";
+import { typeset } from "./typeset.js";
 
 /** @param {string} name @param {Record<string, string>} [set] @param {(Node|string)[]} [inner] */
 export const el = (name, set = {}, ...inner) => {
@@ -18,20 +19,30 @@ const tags = /** @type {Record<string, string>} */ ({ symbol: "i", sub: "sub", v
 /** @param {any} answer */
 export function showPose(answer) {
   byId("sentence").querySelectorAll("span.l1, span.l2").forEach((line, k) => line.replaceChildren(...answer.sentence.lines[k].map((/** @type {any} */ [text, role]) => (tags[role] ? el(tags[role], {}, text) : el("span", role === "plain" ? {} : { class: "nw" }, text)))));
-  byId("where").textContent = answer.where;
+  byId("where").replaceChildren(...typeset(answer.where));
   document.querySelectorAll("#specimen-matrix .cell").forEach((cell, k) => {
     const content = answer.cells[Math.floor(k / 3)][k % 3];
-    cell.replaceChildren(...number(content.number));
-    cell.setAttribute("title", content.because);
+    cell.replaceChildren(...number(content.number), ...(content.state === "zero" ? [lock()] : []));
+    cell.classList.toggle("zero", content.state === "zero");
+    cell.setAttribute("aria-label", `cell ${content.label}: ${content.number.text}, ${content.because}`);
+    if (cell.classList.contains("shown")) byId("posed-why").replaceChildren(...typeset(content.because));
   });
   byId("along").querySelectorAll("tbody tr").forEach((row, k) => {
     const { value, rod, flux } = answer.along[k];
     const cells = row.querySelectorAll("td");
     cells[0].replaceChildren(...number(value));
     cells[1].replaceChildren(...(rod ? number(rod) : ["–"]));
+    cells[1].hidden = byId("other-head").hidden;
     cells[2].textContent = flux;
   });
   showRuler(answer.ruler);
+}
+
+/** @param {any} p @param {number} x */
+function principalName(p, x) {
+  const text = make("text", { class: `name${p.locked ? " locked" : ""}`, x, y: 12 }, "p");
+  text.append(make("tspan", { class: "sub", dy: 3 }, p.name));
+  return text;
 }
 
 /** @param {any} ruler */
@@ -39,14 +50,14 @@ function showRuler(ruler) {
   const at = (/** @type {number} */ part) => 8 + 300 * part;
   const parts = [make("path", { d: "M8 36H308V62H8Z" + ruler.ticks.map((/** @type {any} */ t) => `M${at(t.at)} 36v${t.text ? 9 : 4}`).join("") })];
   for (const tick of ruler.ticks) if (tick.text) parts.push(make("text", { x: at(tick.at), y: 58 }, tick.text));
-  for (const p of ruler.principal) parts.push(make("path", { class: `mark${p.locked ? " locked" : ""}`, d: `M${at(p.at)} 17l5 5-5 5-5-5ZM${at(p.at)} 27v9` }), make("text", { class: `name${p.locked ? " locked" : ""}`, x: at(p.at), y: 12 }, `p${p.name}`));
+  for (const p of ruler.principal) parts.push(make("path", { class: `mark${p.locked ? " locked" : ""}`, d: `M${at(p.at)} 17l5 5-5 5-5-5ZM${at(p.at)} 27v9` }), principalName(p, at(p.at)));
   for (const a of ruler.axes) parts.push(make("path", { class: "mark", d: `M${at(a.at)} 62l4 10h-8Z` }), make("text", { class: "name", x: at(a.at), y: 88 }, a.name));
   byId("ruler").replaceChildren(...parts);
 }
 
 /** @param {any} subject */
 export function showSubject(subject) {
-  byId("frame-sentence").textContent = subject.frame;
+  byId("frame-sentence").replaceChildren(...typeset(subject.frame));
   for (const cell of subject.cells.flat()) {
     const button = document.querySelector(`[data-cell="${cell.label}"]`);
     if (!button) continue;
@@ -57,13 +68,48 @@ export function showSubject(subject) {
   }
   byId("shape").textContent = subject.shape;
   byId("quadric").textContent = subject.quadric;
-  byId("words").textContent = subject.words;
+  byId("other-head").textContent = subject.other ?? "";
+  byId("other-head").hidden = !subject.other;
   byId("region-note").hidden = !subject.has_region;
-  byId("principal").replaceChildren(...subject.principal.map((/** @type {any} */ p) => el("div", p.locked ? { class: "lk" } : {}, el("dt", {}, el("i", {}, "p"), el("sub", {}, p.name)), el("dd", {}, el("b", {}, p.value), el("span", {}, ...(p.locked ? [lock()] : []), [].concat(p.lines).join("; "))))));
+  byId("principal").replaceChildren(...subject.principal.map((/** @type {any} */ p) => el("div", p.locked ? { class: "lk" } : {}, el("dt", {}, el("i", {}, "p"), el("sub", {}, p.name)), el("dd", {}, el("b", {}, p.value), el("span", {}, ...(p.locked ? [lock()] : []), ...[].concat(p.lines).flatMap((line, k) => [...(k ? [el("br")] : []), ...typeset(line)]))))));
   const entry = (/** @type {any[]} */ paths, /** @type {string} */ text) => { const svg = make("svg", { viewBox: "0 0 46 14", "aria-hidden": "true" }); svg.append(...paths.map(([name, d]) => make("path", { class: name, d }))); return el("li", {}, svg, text); };
   byId("key").replaceChildren(
     entry([["axis", "M2 7h32"], ["head", "M46 7l-14-5 3 5-3 5z"]], "specimen"), entry([["crystal", "M2 7h33"], ["ring", "M35 7a5 5 0 1 0 10 0a5 5 0 1 0-10 0Z"]], "crystal"), entry([["principal", "M2 7h34"], ["diamond", "M40 1.5l5.5 5.5-5.5 5.5-5.5-5.5z"]], "principal"),
     ...(subject.mirrors.length ? [entry([["mirror", "M2 7h42"]], `mirror across ${subject.mirrors.join(", ")}`)] : []), entry([["cross", "M2 3h42M2 11h42"], ["axis", "M2 7h42"]], `value, every ${subject.step}`));
+}
+
+/** Name and unit of what is shown. @param {any} property @param {string} unit */
+export function showProperty(property, unit) {
+  if (!property) return;
+  byId("property-line").textContent = [property.name.slice(0, 1).toUpperCase() + property.name.slice(1), unit].filter(Boolean).join(", ");
+  byId("along-unit").textContent = unit;
+}
+
+/** What the surface's radius means. @param {any} subject @param {string} kind */
+export function showSurfaceWords(subject, kind) {
+  const { lead, words } = subject.surfaces[kind];
+  byId("lead").textContent = lead;
+  byId("words").replaceChildren(...typeset(words));
+}
+
+/** The kept poses, each a button that turns there and one that forgets it. @param {{name: string, pose: any}[]} poses */
+export function showPoses(poses) {
+  byId("poses").replaceChildren(...poses.map(({ name }) => el("li", {}, el("button", { type: "button", class: "button btn", "data-pose": name }, name), el("button", { type: "button", class: "row-act", "data-forget": name, "aria-label": `Forget the pose ${name}` }, "×"))));
+}
+
+/** The specimen frame's cells say on focus or under the pointer what makes them so. @param {() => any} answer */
+export function explainPosed(answer) {
+  const table = byId("specimen-matrix");
+  const tell = (/** @type {Event} */ event) => {
+    const button = /** @type {HTMLElement} */ (event.target)?.closest?.("[data-posed]");
+    if (!button) return;
+    table.querySelectorAll(".shown").forEach((other) => other.classList.remove("shown"));
+    button.classList.add("shown");
+    const cell = answer().cells.flat().find((/** @type {any} */ c) => c.label === /** @type {any} */ (button).dataset.posed);
+    byId("posed-why").replaceChildren(...typeset(cell.because));
+  };
+  table.addEventListener("focusin", tell);
+  table.addEventListener("mouseover", tell);
 }
 
 /** Cells of the crystal frame: free ones are typed into, locked ones say why. @param {(label: string, text: string) => Promise<any>} take @param {() => any} subject */
@@ -75,7 +121,7 @@ export function makeEditable(take, subject) {
     if (!button) return;
     table.querySelectorAll(".shown").forEach((other) => other.classList.remove("shown"));
     const cell = find(/** @type {any} */ (button).dataset.cell);
-    byId("why").textContent = cell.state === "free" ? "" : cell.because;
+    byId("why").replaceChildren(...typeset(cell.state === "free" ? "" : cell.because));
     if (cell.state !== "free") button.classList.add("shown");
   };
   table.addEventListener("focusin", tell);

@@ -18,8 +18,31 @@ export function unpack(data) {
 
 const column = (/** @type {any} */ flat, /** @type {number} */ k) => Array.from({ length: flat.length / 3 }, (_, i) => (Number.isNaN(flat[3 * i + k]) ? null : flat[3 * i + k]));
 
-/** @param {HTMLElement} place */
-export function makeScene(place) {
+/** Frames slower than this, in milliseconds, put the light lines away until the hand rests. */
+const SLOW = 50;
+const REST = 350;
+
+/** Whether this browser can draw in three dimensions. */
+function canDraw() {
+  const canvas = document.createElement("canvas");
+  return Boolean(canvas.getContext("webgl2") ?? canvas.getContext("webgl"));
+}
+
+/** @param {HTMLElement} place @param {() => void} onMissing called where nothing can be drawn here */
+export function makeScene(place, onMissing) {
+  let lastFrame = 0, slow = 0, thin = false, rest = 0;
+  /** Which traces are light lines. */
+  let light = /** @type {number[]} */ ([]);
+  const showLight = (/** @type {boolean} */ visible) => { thin = !visible; if (light.length) plotly().restyle(place, { visible }, light); };
+  /** Counts slow frames while the picture moves; the light lines come back when it rests. */
+  function pace() {
+    const now = performance.now(), took = now - lastFrame;
+    lastFrame = now;
+    if (took < 400) slow = took > SLOW ? slow + 1 : 0;
+    if (slow > 3 && !thin) showLight(false);
+    clearTimeout(rest);
+    rest = window.setTimeout(() => { slow = 0; if (thin) showLight(true); }, REST);
+  }
   let camera = /** @type {any} */ (null);
   let drawn = false;
   const plotly = () => /** @type {any} */ (window).Plotly;
@@ -32,12 +55,17 @@ export function makeScene(place) {
     /** @param {any} given */
     look(given) {
       camera = given;
-      if (drawn) plotly().relayout(place, { "scene.camera": asCamera(given) });
+      if (!drawn) return;
+      pace();
+      plotly().relayout(place, { "scene.camera": asCamera(given) });
     },
     /** @param {{arrays: any}} scene */
     async show({ arrays }) {
       if (!plotly() || !camera) return;
+      if (!canDraw()) return onMissing();
       const traces = [];
+      light = [];
+      thin = false;
       for (const sign of ["plus", "minus"]) {
         const vertices = arrays[`${sign}_vertices`], triangles = arrays[`${sign}_triangles`];
         if (!vertices.length) continue;
@@ -45,6 +73,7 @@ export function makeScene(place) {
         traces.push({ type: "mesh3d", ...plain, x: column(vertices, 0), y: column(vertices, 1), z: column(vertices, 2), i: column(triangles, 0), j: column(triangles, 1), k: column(triangles, 2) });
         for (const [weight, width] of [["light", 1.4], ["heavy", 3.4]]) {
           const points = arrays[`${sign}_${weight}`];
+          if (points.length && weight === "light") light.push(traces.length);
           if (points.length) traces.push({ type: "scatter3d", mode: "lines", hoverinfo: "skip", connectgaps: false, x: column(points, 0), y: column(points, 1), z: column(points, 2), line: { color: token("--ink"), width, dash: sign === "minus" ? "dash" : "solid" } });
         }
       }

@@ -4,6 +4,7 @@ import { clearFaults, showFault } from "./faults.js";
 import { printCell, printNumber, readNumber } from "./format.js";
 import { currentSample, edit } from "./page.js";
 import { call } from "./server.js";
+import { typeset } from "./typeset.js";
 import "./convert-dialog.js";
 import "./property-dialog.js";
 
@@ -23,8 +24,8 @@ function update(sample) {
   const shown = sample.derived.crystal;
   const locks = shown?.cell_locks ?? [];
   get("strip-cell").textContent = printCell(crystal.cell, locks);
-  get("strip-group").textContent = crystal.group + (shown?.unique_axis ? `, unique ${shown.unique_axis}` : "");
-  get("strip-frame").textContent = shown?.frame.sentence ?? crystal.frame;
+  get("strip-group").replaceChildren(...typeset(crystal.group + (shown?.unique_axis ? `, unique ${shown.unique_axis}` : "")));
+  get("strip-frame").replaceChildren(...typeset(shown?.frame.sentence ?? crystal.frame));
   fill(crystal);
   showLocks(locks);
   get("cell-note").textContent = shown?.frame.volume ? `Volume ${printNumber(shown.frame.volume, 5)} Å³. ${shown.cell_sentence}` : "A limiting group has no cell.";

@@ -1,7 +1,7 @@
 // The front page: joins the kept sample, the live channel, the scene, the overlay and the matrices.
 
 import { openLive } from "./live.js";
-import { makeEditable, showPose, showSubject } from "./matrix.js";
+import { explainPosed, makeEditable, showPose, showPoses, showProperty, showSubject, showSurfaceWords } from "./matrix.js";
 import { drawOverlay } from "./overlay.js";
 import { currentSample, edit, step } from "./page.js";
 import { makeScene, unpack } from "./scene.js";
@@ -17,9 +17,9 @@ function start({ subject, first }) {
   let state = turns.begin(subject.hash, first);
   let last = first, waiting = /** @type {any} */ (null), saving = /** @type {any} */ (null), revision = currentSample().revision;
   const startPose = state.pose;
-  const scene = makeScene(byId("plot"));
+  const scene = makeScene(byId("plot"), () => { byId("no-picture").hidden = false; });
   const paint = (/** @type {any} */ answer) => { last = answer; showPose(answer); drawOverlay(back, front, answer.overlay); scene.look(answer.camera); };
-  const paintSubject = (/** @type {any} */ given) => { subject = given; showSubject(given); };
+  const paintSubject = (/** @type {any} */ given) => { subject = given; showSubject(given); showProperty(currentSample().derived.property, given.unit); showSurfaceWords(given, state.surface); };
   const live = openLive({
     onOpen: () => live.send({ type: "tensor", sample: currentSample().id, revision: currentSample().revision }),
     onBinary: (data) => scene.show(unpack(data)),
@@ -60,6 +60,7 @@ function start({ subject, first }) {
     if (!state.press && !waiting) state = { ...state, pose: sample.document.pose };
     live.send({ type: "tensor", sample: sample.id, revision: sample.revision });
   });
+  explainPosed(() => last);
   makeEditable((label, text) => edit({ free: { [label]: text } }), () => subject);
 
   let from = [0, 0];
@@ -86,7 +87,7 @@ function start({ subject, first }) {
   figure.addEventListener("pointercancel", end);
 
   const choose = (/** @type {string} */ attribute, /** @type {string} */ value) => document.querySelectorAll(`[data-${attribute}]`).forEach((button) => button.setAttribute("aria-pressed", String(/** @type {any} */ (button).dataset[attribute] === value)));
-  const setSurface = (/** @type {string} */ kind) => { state = { ...state, surface: kind }; choose("surface", kind); live.send({ type: "surface", hash: state.hash, surface: kind }); request(); };
+  const setSurface = (/** @type {string} */ kind) => { state = { ...state, surface: kind }; choose("surface", kind); showSurfaceWords(subject, kind); live.send({ type: "surface", hash: state.hash, surface: kind }); request(); };
   document.querySelectorAll("[data-surface]").forEach((b) => b.addEventListener("click", () => setSurface(/** @type {any} */ (b).dataset.surface)));
   document.querySelectorAll("[data-hold]").forEach((b) => b.addEventListener("click", () => { const hold = /** @type {any} */ (b).dataset.hold; choose("hold", hold); request({ hold }); }));
   const reset = () => { state = { ...state, pose: startPose, view: { hold: state.view.hold } }; request({}, true); };
@@ -104,12 +105,21 @@ function start({ subject, first }) {
     const way = arrows[event.key];
     if (way) {
       event.preventDefault();
-      if (event.shiftKey) request({ look: [way[0] / 12, way[1] / 12] });
-      else request({ turn: { steps: way } }, true);
+      if (event.shiftKey) return request({ look: [way[0] / 12, way[1] / 12] });
+      state = turns.stepBy(state, way);
+      request({}, true);
     }
     if (event.key === "Home") { event.preventDefault(); reset(); }
     if (event.key.toLowerCase() === "c") setCatch(!state.catching);
   });
+  // The steps count from the first key on; they begin anew when the hand leaves the keys.
+  const letGo = (/** @type {Event} */ event) => {
+    if (state.press?.what !== "keys" || (event instanceof KeyboardEvent && !arrows[event.key])) return;
+    request({}, true);
+    state = turns.release(state);
+  };
+  figure.addEventListener("keyup", letGo);
+  figure.addEventListener("blur", letGo);
   const onForm = (/** @type {string} */ id, /** @type {(f: any) => void} */ act) => byId(id).addEventListener("submit", (/** @type {Event} */ event) => { event.preventDefault(); act(byId(id).elements); });
   const number = (/** @type {any} */ field) => Number(field.value.replace("−", "-"));
   const typed = (/** @type {any} */ pose) => { request({ pose }, true); };
@@ -117,10 +127,20 @@ function start({ subject, first }) {
   onForm("put-two", (f) => request({ put: { axis: "z", on: f.on.value, toward: ["x", f.toward.value] } }, true));
   onForm("tilt", (f) => typed({ from: f.from.value, tilt: number(f.tilt), toward: f.toward.value }));
   onForm("bunge", (f) => typed({ bunge: [number(f.phi1), number(f.PHI), number(f.phi2)] }));
+  byId("more-ways").addEventListener("click", () => { const shut = byId("turn-ways").hidden; byId("turn-ways").hidden = !shut; byId("more-ways").setAttribute("aria-expanded", String(shut)); if (shut) byId("turn-ways").querySelector("input").focus(); });
+  const refuse = (/** @type {any} */ error) => fault([error.message, error.hint].filter(Boolean).join(" "));
+  onForm("block-form", (f) => { edit({ part: ["x", "y", "z"].map((name) => number(f[name])) }).then(() => fault(""), refuse); });
+  onForm("keep-pose", (f) => { edit({ poses: { [f.name.value.trim()]: state.pose } }).then(() => { f.name.value = ""; fault(""); }, refuse); });
+  byId("poses").addEventListener("click", (/** @type {any} */ event) => {
+    const { pose, forget } = event.target.dataset ?? {};
+    if (forget) edit({ poses: { [forget]: null } }).catch(refuse);
+    if (pose) typed(currentSample().document.poses.find((/** @type {any} */ entry) => entry.name === pose).pose);
+  });
+  document.addEventListener("sample", (event) => showPoses(/** @type {CustomEvent} */ (event).detail.document.poses ?? []));
+  showPoses(currentSample().document.poses ?? []);
   paintSubject(subject);
   paint(first);
   const loaded = () => { if (/** @type {any} */ (window).Plotly) live.send({ type: "surface", hash: state.hash, surface: state.surface }); };
   window.addEventListener("load", loaded);
   matchMedia("(prefers-color-scheme: dark)").addEventListener("change", () => loaded());
-  void last;
 }

@@ -118,7 +118,7 @@ def demonstration_documents() -> tuple[SampleDocument, ...]:
         ],
         "readings": _readings(_EXPANSION_READINGS, EXPANDING, "1e-6/K", 1.0),
         "pose": {"exact": ["z", "(0 1 1)"], "toward": ["x", "[1 0 0]"]},
-        "part": [3, 3, 8],
+        "part": [5, 5, 6],
         "looking": {"property": EXPANDING, "surface": "quadric"},
     }
     return read_document(conductor), read_document(shrinker)

@@ -12,6 +12,13 @@ from app.web.strokes import Shape, shape, to_drawing, write_head, write_path, wr
 
 FloatArray = npt.NDArray[np.float64]
 
+
+def print_length(millimetres: float) -> str:
+    """A side of the block as a drawing prints it: one decimal at least, three digits at most."""
+    text = f"{millimetres:.3g}"
+    return text if "." in text or "e" in text or millimetres >= 100 else f"{text}.0"
+
+
 STEM: Final = 0.36
 """How far a specimen axis stands out of its face."""
 RING: Final = 0.15
@@ -169,7 +176,7 @@ def _draw_dimensions(
         angle = float(np.rad2deg(np.arctan2(-along[1], along[0])))
         angle = (angle + 90.0) % 180.0 - 90.0
         x, y = to_drawing(moved.mean(axis=0))
-        text = f"{subject.part[axis]:.3g}" + (" mm" if axis == upright else "")
+        text = print_length(subject.part[axis]) + (" mm" if axis == upright else "")
         texts.append(
             {
                 "class": "dimension-text",

@@ -80,10 +80,15 @@ def describe_subject(subject: Subject) -> dict[str, Any]:
         "principal": _render_principal(subject),
         "shape": subject.principal.shape,
         "quadric": name_quadric(values),
-        "words": _describe_quadric(subject),
+        "surfaces": {
+            "quadric": {"lead": "Long is small.", "words": _describe_quadric(subject)},
+            "value": {"lead": "Long is large.", "words": _describe_value_surface(subject)},
+            "flux": {"lead": "Long is large.", "words": FLUX_WORDS},
+        },
         "mirrors": [_name_mirror(subject, normal) for normal in subject.mirrors],
         "negative": bool(np.any(values < 0)),
         "has_region": bool(subject.regions),
+        "other": {"rod": "long bar", "plate": "wide plate", None: None}[subject.other],
         "step": _print_step(subject),
     }
 
@@ -160,6 +165,20 @@ def _describe_quadric(subject: Subject) -> str:
     if arbitrary[2]:
         return "The radius is 1/√value, so the surface is shortest where the value is largest."
     return "The radius is 1/√value, so the surface is longest along p3, where the value is smallest."
+
+
+FLUX_WORDS: Final = (
+    "The radius is the size of the effect, |A n|, for a cause of one along that direction; its lines are of equal "
+    "value, which is the part of the effect along the cause."
+)
+
+
+def _describe_value_surface(subject: Subject) -> str:
+    if not np.any(subject.principal.values):
+        return "The tensor is zero: there is nothing to draw."
+    if np.any(subject.principal.values < 0):
+        return "The radius is the size of the value. Dashed lines over dots mark the lobes of negative values."
+    return "The radius is the value along that direction."
 
 
 def describe_pose(

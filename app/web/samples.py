@@ -17,7 +17,7 @@ from app.web.answers import JsonAnswer
 from app.web.bodies import StrictRoute
 from app.web.changes import EditRequest, MarkRequest, NewSampleRequest, StepRequest
 from app.web.editing import apply_change
-from app.web.kept import render_entry, render_sample
+from app.web.kept import print_own_unit, render_entry, render_sample
 from app.web.pictures import draw_quadric
 
 _ERRORS: dict[int | str, dict[str, Any]] = {
@@ -56,7 +56,13 @@ def render_summary(summary: Summary) -> dict[str, Any]:
         "group": summary.group,
         "cell": None if summary.cell is None else list(summary.cell),
         "crystal": summary.crystal,
-        "property": None if looked_at is None else {"name": looked_at["name"], "unit": looked_at["unit"]},
+        "property": None
+        if looked_at is None
+        else {
+            "name": looked_at["name"],
+            "unit": looked_at["unit"],
+            "unit_printed": print_own_unit(looked_at["unit"]),
+        },
         "revision": summary.revision,
         "saved_at": summary.time,
         "archived": summary.archived,

@@ -15,7 +15,8 @@ from app.crystal.crystal import Crystal
 from app.crystal.direction import typeset_indices
 from app.crystal.lattice import find_nearest
 from app.errors import ConflictError, HalfturnError, InputError
-from app.store.document import current_property
+from app.store.canonical import content_hash
+from app.store.document import current_property, readings_of
 from app.store.revisions import Kept
 from app.store.sheets import Sheet, hash_inputs
 from app.tensor.pose import AXIS_LETTERS
@@ -74,6 +75,12 @@ def build_sheet(kept: Kept) -> dict[str, Any]:
         "cells": subject["cells"],
         "posed": first["cells"],
         "where": first["where"],
+        "pose": _describe_pose(crystal, matrix),
+        "set_aside": [
+            {"reading": _name_reading(entry.plain()), "reason": entry.set_aside}
+            for entry in readings_of(document, shown.id)
+            if entry.set_aside is not None
+        ],
         "bunge": [f"{angle:.2f}".replace("-", "−") for angle in first["pose"]["bunge"]],
         "axes": [_describe_axis(crystal, letter, axis) for letter, axis in zip(AXIS_LETTERS, matrix, strict=True)],
         "along": first["along"],
@@ -103,10 +110,32 @@ def _print_conditions(conditions: dict[str, Any]) -> str:
     return ", ".join(parts)
 
 
+def _describe_pose(crystal: Crystal, matrix: Any) -> str:
+    """The pose in words: z by the nearest plane's normal, x by the nearest row, each with how far off it is."""
+    if crystal.M is None:
+        return ", ".join(
+            f"{letter} along {_print_vector(axis)}" for letter, axis in zip("zx", matrix[::-2], strict=True)
+        )
+    normal, row = find_nearest(crystal, matrix[2], "normal"), find_nearest(crystal, matrix[0], "row")
+    return (
+        f"z on {typeset_indices(normal.text)}, off by {print_angle(normal.off)}; "
+        f"x toward {typeset_indices(row.text)}, off by {print_angle(row.off)}; y = z × x"
+    )
+
+
+def _name_reading(reading: dict[str, Any]) -> str:
+    where = reading.get("direction")
+    parts = [reading["kind"], where if isinstance(where, str) else "", reading.get("bar") or ""]
+    return " ".join(part for part in parts if part)
+
+
+def _print_vector(vector: Any) -> str:
+    return f"({', '.join(f'{round(float(part), 4) + 0.0:.4f}' for part in vector)})".replace("-", "−")
+
+
 def _describe_axis(crystal: Crystal, letter: str, axis: Any) -> dict[str, str]:
     if crystal.M is None:
-        components = ", ".join(f"{round(float(part), 4) + 0.0:.4f}" for part in axis).replace("-", "−")
-        return {"axis": letter, "normal": f"({components}) in x1 x2 x3", "row": ""}
+        return {"axis": letter, "normal": f"{_print_vector(axis)} in x1 x2 x3", "row": ""}
     normal, row = find_nearest(crystal, axis, "normal"), find_nearest(crystal, axis, "row")
     return {
         "axis": letter,
@@ -148,7 +177,10 @@ def freeze_sheet(sample_id: str, revision: int, request: Request) -> Response:
     shown = current_property(kept.document)
     if shown is None:
         raise InputError("This sample has no property to print a sheet of.", hint="Add one on its Tensor page.")
-    sheet = store.sheets.freeze(sample_id, revision, shown.id, build_sheet(kept))
+    content = build_sheet(kept)
+    # What was printed is kept as it was set, so that no later version of this program prints it otherwise.
+    content["printed"] = str(vars(templates.get_template("sheet_body.html").module)["printed"](content))
+    sheet = store.sheets.freeze(sample_id, revision, shown.id, content)
     return RedirectResponse(f"/sheets/{sheet.number}", status_code=303)
 
 
@@ -171,5 +203,6 @@ def _summarise(sheet: Sheet) -> dict[str, Any]:
         "created": sheet.created[:16].replace("T", " "),
         "superseded": sheet.superseded,
         "hash": sheet.inputs_hash[:HASH_SHOWN],
+        "content_hash": content_hash(sheet.content)[:HASH_SHOWN],
         "property": sheet.content.get("property", ""),
     }

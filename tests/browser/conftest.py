@@ -30,6 +30,11 @@ FLAGS = [
 ]
 
 
+def sandbox_flags() -> list[str]:
+    """The sandbox does not work for root, who runs the build."""
+    return ["--no-sandbox"] if hasattr(os, "geteuid") and os.geteuid() == 0 else []
+
+
 @pytest.fixture(scope="session")
 def chromium_path() -> Path:
     found = next((name for name in ("chromium", "chromium-browser", "google-chrome") if shutil.which(name)), None)
@@ -49,9 +54,7 @@ def driver() -> Iterator[Playwright]:
 
 @pytest.fixture(scope="session")
 def browser(chromium_path: Path, driver: Playwright) -> Iterator[Browser]:
-    # The sandbox does not work for root, who runs the build.
-    sandbox = ["--no-sandbox"] if hasattr(os, "geteuid") and os.geteuid() == 0 else []
-    browser = driver.chromium.launch(executable_path=str(chromium_path), args=[*FLAGS, *sandbox])
+    browser = driver.chromium.launch(executable_path=str(chromium_path), args=[*FLAGS, *sandbox_flags()])
     yield browser
     browser.close()
 
@@ -69,7 +72,13 @@ def page(browser: Browser, served: Served) -> Iterator[Page]:
 
     here = urlsplit(served.url).netloc
     page.on("request", look_at)
-    page.on("requestfailed", lambda request: faults.append(f"failed request: {request.url}"))
+
+    def read_failure(request: Request) -> None:
+        # What was on its way when the page was left is no fault.
+        if request.failure != "net::ERR_ABORTED":
+            faults.append(f"failed request: {request.url}: {request.failure}")
+
+    page.on("requestfailed", read_failure)
     page.on("pageerror", lambda error: faults.append(f"script error: {error}"))
     # A refusal is an answer, which the page tells; the browser notes every one of them as an error of its own.
     refusal = re.compile(r"Failed to load resource: the server responded with a status of (409|422)")

@@ -16,8 +16,8 @@ from playwright.sync_api import Page, expect
 from tests.processes import Served
 
 
-def test_a_free_cell_is_edited_and_the_tied_one_follows(page: Page) -> None:
-    page.goto("/")
+def test_a_free_cell_is_edited_and_the_tied_one_follows(page: Page, served: Served) -> None:
+    open_copy(page, served)
     page.click("[data-cell='13']")
     page.fill(".cell-input", "1.95(6)")
     page.keyboard.press("Enter")
@@ -26,9 +26,8 @@ def test_a_free_cell_is_edited_and_the_tied_one_follows(page: Page) -> None:
     expect(page.locator("#why")).to_contain_text("the half-turn about x2 turns 12 into −12")
 
 
-def test_looking_changes_no_number_and_turning_does(page: Page) -> None:
-    page.goto("/")
-    page.wait_for_timeout(1500)
+def test_looking_changes_no_number_and_turning_does(page: Page, served: Served) -> None:
+    open_copy(page, served)
     matrix = page.inner_text("#specimen-matrix")
     page.focus("#figure")
     drawn = page.inner_html("svg.front")
@@ -39,10 +38,10 @@ def test_looking_changes_no_number_and_turning_does(page: Page) -> None:
     page.wait_for_function("m => document.querySelector('#specimen-matrix').innerText !== m", arg=matrix)
 
 
-def open_copy(page: Page, served: Served, group: str = "2/m") -> str:
+def open_copy(page: Page, served: Served, name: str = "Demonstration crystal") -> str:
     """Open a fresh copy of a demonstration sample, so that the tests do not see each other's changes."""
     listed = httpx.get(f"{served.url}api/samples").json()
-    source = next(entry["id"] for entry in listed if entry["group"] == group)
+    source = next(entry["id"] for entry in listed if entry["name"] == name)
     made = str(httpx.post(f"{served.url}api/samples", json={"from": source}).json()["id"])
     page.goto(f"/samples/{made}/tensor", wait_until="networkidle")
     page.wait_for_timeout(800)
@@ -152,28 +151,69 @@ def test_without_the_plotting_script_it_reads_and_turns(page: Page, served: Serv
     wait_for_revision(page, served, sample, before)
 
 
-@pytest.mark.parametrize("direction", ["(0 0 1)", "(1 0 0)", "(1 1 1)", "[1 2 -1]"])
-def test_overlay_and_scene_agree_in_rendered_pixels(page: Page, served: Served, direction: str) -> None:
-    # The drawn outline against the silhouette of what plotly rendered, without the overlay.
-    sample = open_copy(page, served)
-    before = fetch(served, sample)["revision"]
-    page.fill("#put-on", direction)
-    page.keyboard.press("Enter")
-    wait_for_revision(page, served, sample, before)
-    page.wait_for_timeout(1200)
-    outline = page.evaluate(
-        "(() => { const b = document.querySelector('svg.front path.outline').getBoundingClientRect();"
-        " return [b.left, b.top, b.right, b.bottom]; })()"
+POSES = [
+    "(0 0 1)",
+    "(1 0 0)",
+    "(1 1 1)",
+    "[1 2 -1]",
+    "(-2 0 1)",
+    "[1 0 0]",
+    "(0 1 3)",
+    "[-1 3 2]",
+    "(2 -1 0)",
+    "[0 1 0]",
+]
+
+
+def find_silhouette(page: Page) -> Any:
+    """Left, top, right and bottom of what plotly rendered, on the screen, without the overlay."""
+    style = page.add_style_tag(
+        content="svg.draw, figcaption, .said, .bar.lower, .key { visibility: hidden !important }"
     )
-    page.add_style_tag(content="svg.draw{visibility:hidden!important} figcaption,.said{visibility:hidden!important}")
     stage = page.locator(".stage").bounding_box()
     assert stage is not None
     picture = Image.open(io.BytesIO(page.screenshot(clip=stage))).convert("RGB")
+    style.evaluate("element => element.remove()")
     pixels = np.asarray(picture, dtype=int)
     inked = np.max(np.abs(pixels - pixels[2, 2]), axis=2) > 3
     rows, columns = np.flatnonzero(inked.any(axis=1)), np.flatnonzero(inked.any(axis=0))
-    seen = [columns[0] + stage["x"], rows[0] + stage["y"], columns[-1] + 1 + stage["x"], rows[-1] + 1 + stage["y"]]
-    assert seen == pytest.approx(outline, abs=4)
+    return [columns[0] + stage["x"], rows[0] + stage["y"], columns[-1] + 1 + stage["x"], rows[-1] + 1 + stage["y"]]
+
+
+def test_overlay_and_scene_agree_in_rendered_pixels_at_ten_poses(page: Page, served: Served) -> None:
+    # The drawn outline against the silhouette of what plotly rendered, without the overlay.
+    sample = open_copy(page, served)
+    for direction in POSES:
+        before = fetch(served, sample)["revision"]
+        page.fill("#put-on", direction)
+        page.keyboard.press("Enter")
+        wait_for_revision(page, served, sample, before)
+        page.wait_for_timeout(900)
+        outline = page.evaluate(
+            "(() => { const b = document.querySelector('svg.front path.outline').getBoundingClientRect();"
+            " return [b.left, b.top, b.right, b.bottom]; })()"
+        )
+        assert find_silhouette(page) == pytest.approx(outline, abs=4), direction
+
+
+@pytest.mark.parametrize("surface", ["value", "flux"])
+def test_the_other_surfaces_are_drawn_within_the_block(page: Page, served: Served, surface: str) -> None:
+    open_copy(page, served)
+    page.focus("#figure")
+    page.keyboard.press(surface[0])
+    page.wait_for_timeout(1500)
+    left, top, right, bottom = find_silhouette(page)
+    block = page.evaluate(
+        "(() => { const b = [...document.querySelectorAll('svg.draw path.edge')].map(p => p.getBoundingClientRect());"
+        " return [Math.min(...b.map(r => r.left)), Math.min(...b.map(r => r.top)),"
+        " Math.max(...b.map(r => r.right)), Math.max(...b.map(r => r.bottom))]; })()"
+    )
+    assert left > block[0]
+    assert top > block[1]
+    assert right < block[2]
+    assert bottom < block[3]
+    assert right - left > 80
+    expect(page.locator("#lead")).to_have_text("Long is large.")
 
 
 @pytest.mark.parametrize("width", [390, 1024, 2560])
@@ -185,10 +225,98 @@ def test_it_fits_and_has_no_accessibility_violation(page: Page, served: Served, 
 
 
 def test_the_hyperboloid_and_the_other_surfaces_draw(page: Page, served: Served) -> None:
-    open_copy(page, served, "mmm")
+    open_copy(page, served, "Second demonstration crystal")
     expect(page.locator("#quadric")).to_have_text("one-sheet hyperboloid")
     page.focus("#figure")
     for key in ("v", "f", "q"):
         page.keyboard.press(key)
         page.wait_for_timeout(500)
     expect(page.locator("[data-surface='quadric']")).to_have_attribute("aria-pressed", "true")
+
+
+def test_a_fast_hand_on_the_keys_loses_no_step(page: Page, served: Served) -> None:
+    sample = open_copy(page, served)
+    before = fetch(served, sample)
+    page.focus("#figure")
+    page.keyboard.press("c")
+    page.evaluate(
+        """() => { const figure = document.getElementById("figure");
+          for (let n = 0; n < 30; n += 1)
+            figure.dispatchEvent(new KeyboardEvent("keydown", {key: ".", bubbles: true, cancelable: true}));
+          figure.dispatchEvent(new KeyboardEvent("keyup", {key: ".", bubbles: true})); }"""
+    )
+    after = wait_for_revision(page, served, sample, before["revision"])
+    first, last = (np.array(state["derived"]["state"]["pose"]["matrix"]) for state in (before, after))
+    # A turn of the specimen about its own z by 30°, right-handed: x goes toward y.
+    half = np.sqrt(3) / 2
+    assert last == pytest.approx(np.array([[half, 0.5, 0], [-0.5, half, 0], [0, 0, 1]]) @ first, abs=1e-9)
+
+
+def test_the_catch_goes_off_with_a_key_and_one_key_leads_back_to_the_start(page: Page, served: Served) -> None:
+    sample = open_copy(page, served)
+    before = fetch(served, sample)
+    page.focus("#figure")
+    page.keyboard.press("c")
+    expect(page.locator("#said")).to_have_text("Gentle catch off")
+    page.keyboard.press("ArrowLeft")
+    turned = wait_for_revision(page, served, sample, before["revision"])
+    page.keyboard.press("Home")
+    back = wait_for_revision(page, served, sample, turned["revision"])
+    start = before["derived"]["state"]["pose"]["matrix"]
+    assert np.array(back["derived"]["state"]["pose"]["matrix"]) == pytest.approx(np.array(start), abs=1e-9)
+
+
+def test_holding_the_crystal_keeps_the_picture_and_turns_the_block(page: Page, served: Served) -> None:
+    sample = open_copy(page, served)
+    before = fetch(served, sample)
+    page.get_by_role("button", name="Hold the crystal").click()
+    page.wait_for_timeout(400)
+    outline = page.locator("svg.front path.outline").get_attribute("d")
+    crystal = page.locator("svg.front path.crystal").all()[0].get_attribute("d")
+    drag(page, hold_at(page, "block"), 70, 10)
+    wait_for_revision(page, served, sample, before["revision"])
+    page.wait_for_timeout(400)
+    assert page.locator("svg.front path.outline").get_attribute("d") == outline
+    assert page.locator("svg.front path.crystal").all()[0].get_attribute("d") == crystal
+
+
+def test_a_ring_turns_about_its_own_axis_only(page: Page, served: Served) -> None:
+    sample = open_copy(page, served)
+    before = fetch(served, sample)
+    drag(page, hold_at(page, "z"), 50, 0)
+    after = wait_for_revision(page, served, sample, before["revision"])
+    first, last = (np.array(state["derived"]["state"]["pose"]["matrix"]) for state in (before, after))
+    assert last[2] == pytest.approx(first[2], abs=1e-9)
+    assert abs(last[0] @ first[0]) < 0.9999
+
+
+def test_poses_are_kept_by_name_and_the_block_is_given_its_size(page: Page, served: Served) -> None:
+    sample = open_copy(page, served)
+    page.get_by_role("button", name="Other ways").click()
+    page.get_by_label("Name of the pose").fill("first cut")
+    page.keyboard.press("Enter")
+    expect(page.get_by_role("button", name="first cut", exact=True)).to_be_visible()
+    sentence = page.inner_text("#sentence")
+    page.get_by_label("Tilt in degrees").fill("4")
+    page.get_by_label("Direction to tilt from").fill("(0 0 1)")
+    page.get_by_label("Direction to tilt toward").fill("[1 0 0]")
+    page.keyboard.press("Enter")
+    expect(page.locator("#sentence")).to_contain_text("4.0° off n(001)")
+    page.get_by_role("button", name="first cut", exact=True).click()
+    expect(page.locator("#sentence")).to_have_text(sentence)
+    page.get_by_label("Block along z in millimetres").fill("-1")
+    page.keyboard.press("Enter")
+    expect(page.locator("#turn-fault")).to_contain_text("A side of the block is a length above 0 mm.")
+    page.get_by_label("Block along z in millimetres").fill("9")
+    page.keyboard.press("Enter")
+    expect(page.locator("svg.front")).to_contain_text("9.0 mm")
+    page.get_by_role("button", name="Forget the pose first cut").click()
+    expect(page.locator("#poses li")).to_have_count(0)
+    assert fetch(served, sample)["document"]["part"][2] == 9
+
+
+def test_a_cell_of_the_specimen_frame_says_why_it_is_zero(page: Page, served: Served) -> None:
+    open_copy(page, served, "Second demonstration crystal")
+    page.focus("[data-posed='xy']")
+    expect(page.locator("#posed-why")).not_to_be_empty()
+    assert page.locator("[data-posed='xy'] .lock").count() == 1
