@@ -17,6 +17,7 @@ from app.web import (
     readings_page,
     readings_table,
     samples,
+    series_calls,
     sheet_page,
     static_files,
     tensor_page,
@@ -68,6 +69,7 @@ def create_app(data_dir: Path | None = None) -> FastAPI:
     app.include_router(readings_table.router)
     app.include_router(sheet_page.router)
     app.include_router(calculation.router)
+    app.include_router(series_calls.router)
     app.include_router(static_files.router)
     app.mount("/static", static_files.RevalidatedFiles(directory=static_folder()), name="static")
     return app

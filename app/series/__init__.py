@@ -1,0 +1,1 @@
+"""Tensors and cells against temperature, wavelength, pressure or composition."""
