@@ -67,7 +67,6 @@ export function showSubject(subject) {
     else button.replaceChildren(...number(cell.number), ...(cell.state === "tied" ? [el("span", { class: "eq" }, lock(), `= ${cell.equals}`)] : []));
   }
   byId("shape").textContent = subject.shape;
-  byId("quadric").textContent = subject.quadric;
   byId("other-head").textContent = subject.other ?? "";
   byId("other-head").hidden = !subject.other;
   byId("region-note").hidden = !subject.has_region;
@@ -88,6 +87,8 @@ export function showProperty(property, unit) {
 /** What the surface's radius means. @param {any} subject @param {string} kind */
 export function showSurfaceWords(subject, kind) {
   const { lead, words } = subject.surfaces[kind];
+  byId("surface-name").textContent = { quadric: "Quadric", value: "Value surface", flux: "Flux surface" }[kind] ?? "";
+  byId("quadric").textContent = kind === "quadric" ? subject.quadric : `quadric: ${subject.quadric}`;
   byId("lead").textContent = lead;
   byId("words").replaceChildren(...typeset(words));
 }

@@ -14,7 +14,7 @@ const NAMES = /** @type {Record<string, string>} */ (Object.fromEntries([...grid
 const first = JSON.parse(get("readings-content").textContent);
 let state = grids.begin({ ...first, batches: currentSample().document.batches ?? {} }, currentSample().revision);
 state = { ...state, batches: Object.fromEntries(Object.entries(state.batches).map(([name, value]) => [name, String(value)])) };
-let all = false, sending = false;
+let all = false, sending = false, again = false;
 const editable = () => state.rows.length <= MOST_ROWS;
 
 /** @param {string} text */
@@ -76,8 +76,11 @@ function showAnswer(answer) {
 }
 
 async function send() {
-  if (sending || !state.dirty || state.theirs) return;
+  // Asked for while another is on its way: sent when that is answered.
+  if (sending) { again = true; return; }
+  if (!state.dirty || state.theirs) return;
   sending = true;
+  again = false;
   const typed = state.typed;
   try {
     const { rows, batches } = grids.payload(state);
@@ -92,7 +95,7 @@ async function send() {
   sending = false;
   paint();
   // What is being typed is sent when one leaves its row.
-  if (state.dirty && state.typed !== typed && !body.contains(document.activeElement)) send();
+  if (state.dirty && state.typed !== typed && (again || !body.contains(document.activeElement))) send();
 }
 
 /** @param {any} error */

@@ -10,7 +10,7 @@ from typing import Any
 from fastapi import APIRouter, Request
 from pydantic import Field
 
-from app.errors import ConflictError, InputError
+from app.errors import InputError
 from app.readings.table import read_table
 from app.store import Store
 from app.store.document import KeptProperty, SampleDocument, change_document, readings_of
@@ -25,7 +25,7 @@ from app.web.pages import templates
 from app.web.parts import Part, Pose
 from app.web.readings_view import GRID_COLUMNS, describe_kept, require_property
 from app.web.requests import MAX_READINGS
-from app.web.samples import store_of
+from app.web.samples import save_change, store_of
 
 router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.ERROR_RESPONSES)
 
@@ -165,14 +165,7 @@ def _place(error: InputError, places: Sequence[int]) -> InputError:
 
 def _save(store: Store, sample_id: str, parent: int, changes: Mapping[str, Any]) -> JsonAnswer:
     base = store.samples.get(sample_id, parent)
-    try:
-        kept = store.samples.save(sample_id, change_document(base.document, changes), parent)
-    except ConflictError as error:
-        newest = (error.detail or {}).get("newest_revision")
-        raise ConflictError(
-            error.message, field="parent", hint=error.hint, detail={"newest": newest, **(error.detail or {})}
-        ) from None
-    return JsonAnswer(_render(kept))
+    return JsonAnswer(_render(save_change(store, sample_id, change_document(base.document, changes), parent)))
 
 
 def _render(kept: Kept) -> dict[str, Any]:

@@ -10,8 +10,8 @@ from app.catalogue.listing import list_properties
 from app.errors import ConflictError, InputError, StoreError, located
 from app.store import Store
 from app.store.demonstration import seed
-from app.store.document import change_document, read_document
-from app.store.revisions import Summary
+from app.store.document import SampleDocument, change_document, read_document
+from app.store.revisions import Kept, Summary
 from app.web import responses
 from app.web.answers import JsonAnswer
 from app.web.bodies import StrictRoute
@@ -38,6 +38,14 @@ def store_of(request: Request) -> Store:
             "This server was started without a folder for kept work.", hint="Start it with --data and a folder."
         )
     return store
+
+
+def save_change(store: Store, sample_id: str, document: SampleDocument, parent: int) -> Kept:
+    """Keep a document as the next revision. Raises ConflictError, with ``newest``, against an old parent."""
+    try:
+        return store.samples.save(sample_id, document, parent)
+    except ConflictError as error:
+        raise _with_newest(error) from None
 
 
 def list_samples(store: Store, *, archived: bool = False, deleted: bool = False) -> tuple[Summary, ...]:
@@ -113,10 +121,7 @@ def edit(sample_id: str, given: EditRequest, request: Request) -> JsonAnswer:
     base = store.samples.get(sample_id, given.parent)
     with located("change"):
         edited = apply_change(base.document, given.change)
-    try:
-        kept = store.samples.save(sample_id, edited.document, given.parent)
-    except ConflictError as error:
-        raise _with_newest(error) from None
+    kept = save_change(store, sample_id, edited.document, given.parent)
     return JsonAnswer(render_sample(kept, list(edited.notices)))
 
 
