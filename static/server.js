@@ -74,5 +74,13 @@ export const fetchReadings = (id) => ask("GET", `${at(id)}/readings`);
 export const postReadings = (id, parent, rows, batches) => ask("POST", `${at(id)}/readings`, { parent, rows, batches });
 /** @param {string} id @param {number} parent @param {string} text */
 export const postTable = (id, parent, text) => ask("POST", `${at(id)}/readings/table`, { parent, text });
+/** @param {string} id @param {number} place */
+export const fetchSeries = (id, place) => ask("GET", `${at(id)}/series?at=${place}`);
+/** @param {string} id @param {number} parent @param {object} change @param {number|null} place */
+export const postSeries = (id, parent, change, place) => ask("POST", `${at(id)}/series`, { parent, change, at: place });
+/** @param {string} id @param {number} parent @param {string[]} texts */
+export const postCifs = (id, parent, texts) => ask("POST", `${at(id)}/series/cifs`, { parent, texts });
+/** @param {string} id @param {number} parent @param {number} place */
+export const useSeries = (id, parent, place) => ask("POST", `${at(id)}/series/use`, { parent, at: place });
 /** A calculation call. @param {string} name @param {object} body */
 export const call = (name, body) => ask("POST", `/api/v1/${name}`, body);

@@ -18,6 +18,7 @@ from app.web import (
     readings_table,
     samples,
     series_calls,
+    series_page,
     sheet_page,
     static_files,
     tensor_page,
@@ -67,6 +68,8 @@ def create_app(data_dir: Path | None = None) -> FastAPI:
     app.include_router(live.router)
     app.include_router(readings_page.router)
     app.include_router(readings_table.router)
+    app.include_router(series_page.page_router)
+    app.include_router(series_page.router)
     app.include_router(sheet_page.router)
     app.include_router(calculation.router)
     app.include_router(series_calls.router)
