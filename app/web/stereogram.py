@@ -1,0 +1,186 @@
+"""The stereogram as SVG: poles, symmetry elements, lines of equal value, regions, specimen axes, readings.
+
+Both hemispheres in one circle: what points toward the viewer is drawn full, what points away is projected from the
+other side and drawn open or dashed. Equal-angle keeps circles circles (r = tan θ/2), equal-area keeps areas
+(r = √2 sin θ/2), both with the rim at 1 (International Tables for Crystallography, vol. A, chapter on point groups,
+for the first; Lambert's projection for the second). Symmetry elements have the graphic symbols of International Tables.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+from html import escape
+from typing import Final, Literal
+
+import numpy as np
+import numpy.typing as npt
+
+from app.crystal.crystal import Crystal
+from app.web.symmetry_marks import draw_elements
+
+FloatArray = npt.NDArray[np.float64]
+Projection = Literal["angle", "area"]
+
+RADIUS: Final = 100.0
+NAMED_GAP: Final = 11.0
+
+DEFAULT_SCREEN: Final = np.array([[0.0, 1.0, 0.0], [-1.0, 0.0, 0.0], [0.0, 0.0, 1.0]])
+"""x3 toward the viewer, x2 to the right, x1 down the page."""
+
+
+@dataclass(frozen=True)
+class Mark:
+    """A direction with its sign.
+
+    Attributes:
+        vector: unit vector in the crystal frame.
+        kind: class of the mark, such as "normal", "row", "principal", "specimen", "taken", "proposed".
+        name: printed beside it; empty prints nothing.
+        line: whether the opposite direction is meant as well; then only the near end is drawn.
+        put: a direction as the user would type it; a click on the mark puts z there.
+    """
+
+    vector: FloatArray
+    kind: str
+    name: str = ""
+    line: bool = False
+    put: str = ""
+
+
+@dataclass(frozen=True)
+class Trace:
+    """A curve of unit vectors (n, 3), with the class of its line."""
+
+    points: FloatArray
+    kind: str
+    name: str = ""
+
+
+@dataclass(frozen=True)
+class Picture:
+    """What a stereogram shows beside the symmetry elements."""
+
+    marks: Sequence[Mark] = field(default_factory=tuple)
+    traces: Sequence[Trace] = field(default_factory=tuple)
+
+
+def project(vectors: FloatArray, projection: Projection = "angle") -> FloatArray:
+    """Places in the circle of radius 1 of unit vectors (..., 3) in screen axes (right, up, toward), shape (..., 2).
+
+    Those that point away from the viewer are projected from the other pole, so that they fall within the circle too.
+    """
+    toward = np.abs(vectors[..., 2:])
+    if projection == "angle":
+        # tan θ/2 = sin θ / (1 + cos θ)
+        flat: FloatArray = vectors[..., :2] / (1.0 + toward)
+    else:
+        # √2 sin θ/2 = √(1 − cos θ), and the flat part has the length sin θ = √((1 − cos θ)(1 + cos θ)).
+        flat = vectors[..., :2] / np.sqrt(1.0 + toward)
+    return flat
+
+
+def draw_stereogram(
+    crystal: Crystal,
+    picture: Picture,
+    *,
+    screen: FloatArray = DEFAULT_SCREEN,
+    projection: Projection = "angle",
+    elements: bool = True,
+    title: str = "Stereogram",
+) -> str:
+    """The drawing.
+
+    Args:
+        crystal: whose symmetry elements are drawn.
+        picture: marks and traces.
+        screen: shape (3, 3), right, up and toward the viewer as rows, in the crystal frame.
+        projection: "angle" or "area".
+        elements: whether symmetry elements are drawn.
+        title: what a reader who does not see it is told.
+    """
+    parts = [f'<circle class="stereo-rim" r="{RADIUS:g}"/>', '<path class="stereo-cross" d="M-4 0H4M0-4V4"/>']
+    for trace in picture.traces:
+        parts += _draw_trace(trace, screen, projection)
+    if elements:
+        parts += draw_elements(crystal, screen, lambda vectors: project(vectors, projection), RADIUS)
+    taken: list[tuple[float, float]] = []
+    for mark in picture.marks:
+        parts += _draw_mark(mark, screen, projection, taken)
+    return (
+        f'<svg class="stereogram" viewBox="-122 -116 244 232" role="img" aria-label="{escape(title, quote=True)}">'
+        f"{''.join(parts)}</svg>"
+    )
+
+
+def _draw_trace(trace: Trace, screen: FloatArray, projection: Projection) -> list[str]:
+    """Full where it is near, dashed where it is far; broken where it passes the rim."""
+    shown = np.asarray(trace.points) @ screen.T
+    if len(shown) < 2:
+        return []
+    places = RADIUS * project(shown, projection)
+    near = shown[:, 2] >= -1e-9
+    paths = {True: [""], False: [""]}
+    for start in range(len(shown) - 1):
+        sides = near[start], near[start + 1]
+        if sides[0] != sides[1]:
+            continue
+        (x, y), (u, v) = places[start], places[start + 1]
+        run = paths[bool(sides[0])]
+        joined = start > 0 and near[start - 1] == sides[0] and run[-1]
+        run.append(f"L{u:.1f} {-v:.1f}" if joined else f"M{x:.1f} {-y:.1f}L{u:.1f} {-v:.1f}")
+    parts = []
+    for side, runs in paths.items():
+        drawn = "".join(runs)
+        if drawn:
+            parts.append(f'<path class="stereo-{trace.kind}{"" if side else " far"}" d="{drawn}"/>')
+    return parts
+
+
+def _draw_mark(mark: Mark, screen: FloatArray, projection: Projection, taken: list[tuple[float, float]]) -> list[str]:
+    shown = screen @ mark.vector
+    if mark.line and shown[2] < -1e-9:
+        shown = -shown
+    x, y = RADIUS * project(shown, projection)
+    far = shown[2] < -1e-9
+    shape = SHAPES.get(mark.kind, SHAPES["normal"])
+    put = f' data-put="{escape(mark.put, quote=True)}" tabindex="0" role="button"' if mark.put else ""
+    label = f' aria-label="{escape(f"put z on {mark.name or mark.put}", quote=True)}"' if mark.put else ""
+    parts = [
+        (
+            f'<path class="stereo-mark {mark.kind}{" far" if far else ""}" transform="translate({x:.1f} {-y:.1f})" '
+            f'd="{shape}"{put}{label}/>'
+        )
+    ]
+    if mark.name:
+        parts += _draw_name(mark, float(x), float(-y), taken)
+    return parts
+
+
+def _draw_name(mark: Mark, x: float, y: float, taken: list[tuple[float, float]]) -> list[str]:
+    """The name outward of the mark; where another stands there already it is left out."""
+    size = float(np.hypot(x, y))
+    way = np.array([x, y]) / size if size > 8 else np.array([0.7, -0.7])
+    place = (x + NAMED_GAP * float(way[0]), y + NAMED_GAP * float(way[1]))
+    if any(abs(place[0] - u) < 5.2 * len(mark.name) and abs(place[1] - v) < 8.5 for u, v in taken):
+        return []
+    taken.append(place)
+    anchor = "middle" if abs(way[0]) < 0.5 else ("start" if way[0] > 0 else "end")
+    return [
+        (
+            f'<text class="stereo-name {mark.kind}" x="{place[0]:.1f}" y="{place[1] + 3:.1f}" text-anchor="{anchor}">'
+            f"{escape(mark.name)}</text>"
+        )
+    ]
+
+
+SHAPES: Final = {
+    "normal": "M-2.6 0a2.6 2.6 0 1 0 5.2 0a2.6 2.6 0 1 0-5.2 0Z",
+    "row": "M-2.8 2.4L0-3L2.8 2.4Z",
+    "principal": "M0-4.4L4.4 0L0 4.4L-4.4 0Z",
+    "specimen": "M-4.6 0H4.6M0-4.6V4.6M-3.2-3.2L3.2 3.2M-3.2 3.2L3.2-3.2",
+    "taken": "M-3 0a3 3 0 1 0 6 0a3 3 0 1 0-6 0Z",
+    "proposed": "M-4 0a4 4 0 1 0 8 0a4 4 0 1 0-8 0ZM-7 0H-4M4 0H7M0-7V-4M0 4V7",
+    "target": "M-5 0a5 5 0 1 0 10 0a5 5 0 1 0-10 0ZM-1.5 0a1.5 1.5 0 1 0 3 0a1.5 1.5 0 1 0-3 0Z",
+}
+"""The mark of each role, about its place; roles are told apart by shape, not by colour alone."""
