@@ -28,6 +28,7 @@ from app.tensor.printing import print_value
 from app.web.kept import crystal_for, crystal_of, entry_of, kind_of, pose_of, print_own_unit
 from app.web.kept_readings import take_all, take_readings
 from app.web.posed import render_number
+from app.web.readings_picture import draw_readings
 
 GRID_COLUMNS: Final = (
     ("kind", "kind"),
@@ -81,6 +82,7 @@ def describe_kept(kept: Kept) -> dict[str, Any]:
         "batches": {name: f"{sigma:g}" for name, sigma in kept.document.batches.items()},
         "result": None,
         "residuals": [],
+        "stereogram": "",
         "problem": None,
     }
     try:
@@ -91,6 +93,7 @@ def describe_kept(kept: Kept) -> dict[str, Any]:
         if any(entry.set_aside is None for entry in entries):
             fit, readings = fit_kept(crystal, kept, shown)
             content |= _describe_fit(crystal, fit, readings)
+            content["stereogram"] = draw_readings(crystal, fit, readings, pose_of(crystal, kept.document.pose))
         else:
             content["headline"] = "All readings are set aside." if entries else "No readings yet."
             content["second_line"] = "Type, paste or drop a table of numbers measured on cut bars."

@@ -24,6 +24,7 @@ Projection = Literal["angle", "area"]
 
 RADIUS: Final = 100.0
 NAMED_GAP: Final = 11.0
+ABOVE: Final = ("region", "answer")
 
 DEFAULT_SCREEN: Final = np.array([[0.0, 1.0, 0.0], [-1.0, 0.0, 0.0], [0.0, 0.0, 1.0]])
 """x3 toward the viewer, x2 to the right, x1 down the page."""
@@ -100,10 +101,15 @@ def draw_stereogram(
         title: what a reader who does not see it is told.
     """
     parts = [f'<circle class="stereo-rim" r="{RADIUS:g}"/>', '<path class="stereo-cross" d="M-4 0H4M0-4V4"/>']
+    # What is answered lies above the symmetry elements, the ground of equal values below them.
     for trace in picture.traces:
-        parts += _draw_trace(trace, screen, projection)
+        if trace.kind not in ABOVE:
+            parts += _draw_trace(trace, screen, projection)
     if elements:
         parts += draw_elements(crystal, screen, lambda vectors: project(vectors, projection), RADIUS)
+    for trace in picture.traces:
+        if trace.kind in ABOVE:
+            parts += _draw_trace(trace, screen, projection)
     taken: list[tuple[float, float]] = []
     for mark in picture.marks:
         parts += _draw_mark(mark, screen, projection, taken)
@@ -114,27 +120,39 @@ def draw_stereogram(
 
 
 def _draw_trace(trace: Trace, screen: FloatArray, projection: Projection) -> list[str]:
-    """Full where it is near, dashed where it is far; broken where it passes the rim."""
+    """Full where it is near, dashed where it is far; it is cut where it passes the rim."""
     shown = np.asarray(trace.points) @ screen.T
     if len(shown) < 2:
         return []
+    shown = _cut_at_rim(shown)
     places = RADIUS * project(shown, projection)
-    near = shown[:, 2] >= -1e-9
-    paths = {True: [""], False: [""]}
+    # Of a step that ends on the rim the other end tells the side.
+    middle = shown[:-1, 2] + shown[1:, 2]
+    paths: dict[bool, list[str]] = {True: [], False: []}
+    last = {True: -2, False: -2}
     for start in range(len(shown) - 1):
-        sides = near[start], near[start + 1]
-        if sides[0] != sides[1]:
-            continue
+        side = bool(middle[start] >= -1e-12)
         (x, y), (u, v) = places[start], places[start + 1]
-        run = paths[bool(sides[0])]
-        joined = start > 0 and near[start - 1] == sides[0] and run[-1]
-        run.append(f"L{u:.1f} {-v:.1f}" if joined else f"M{x:.1f} {-y:.1f}L{u:.1f} {-v:.1f}")
-    parts = []
-    for side, runs in paths.items():
-        drawn = "".join(runs)
-        if drawn:
-            parts.append(f'<path class="stereo-{trace.kind}{"" if side else " far"}" d="{drawn}"/>')
-    return parts
+        joined = last[side] == start - 1
+        paths[side].append(f"L{u:.1f} {-v:.1f}" if joined else f"M{x:.1f} {-y:.1f}L{u:.1f} {-v:.1f}")
+        last[side] = start
+    return [
+        f'<path class="stereo-{trace.kind}{"" if side else " far"}" d="{"".join(runs)}"/>'
+        for side, runs in paths.items()
+        if runs
+    ]
+
+
+def _cut_at_rim(shown: FloatArray) -> FloatArray:
+    """The polyline with a point on the rim wherever it passes from one side to the other."""
+    heights = shown[:, 2]
+    passing = np.flatnonzero(heights[:-1] * heights[1:] < 0)
+    part = heights[passing] / (heights[passing] - heights[passing + 1])
+    between = shown[passing] + part[:, None] * (shown[passing + 1] - shown[passing])
+    between[:, 2] = 0.0
+    between /= np.linalg.norm(between, axis=1)[:, None]
+    cut: FloatArray = np.insert(shown, passing + 1, between, axis=0)
+    return cut
 
 
 def _draw_mark(mark: Mark, screen: FloatArray, projection: Projection, taken: list[tuple[float, float]]) -> list[str]:
@@ -169,9 +187,15 @@ def _draw_name(mark: Mark, x: float, y: float, taken: list[tuple[float, float]])
     return [
         (
             f'<text class="stereo-name {mark.kind}" x="{place[0]:.1f}" y="{place[1] + 3:.1f}" text-anchor="{anchor}">'
-            f"{escape(mark.name)}</text>"
+            f"{_set_name(mark)}</text>"
         )
     ]
+
+
+def _set_name(mark: Mark) -> str:
+    if mark.kind == "principal" and len(mark.name) == 2:
+        return f'{escape(mark.name[0])}<tspan font-size="6.5" dy="2">{escape(mark.name[1])}</tspan>'
+    return escape(mark.name)
 
 
 SHAPES: Final = {

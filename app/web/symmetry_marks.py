@@ -66,9 +66,10 @@ def draw_elements(
         project: from unit vectors in screen axes to places in the circle of radius 1.
         radius: of the circle.
     """
-    parts = []
-    for normal in find_mirrors(crystal):
-        parts.append(f'<path class="stereo-mirror" d="{_trace_mirror(screen @ normal, project, radius)}"/>')
+    parts = [
+        f'<path class="stereo-mirror" d="{_trace_mirror(screen @ normal, project, radius)}"/>'
+        for normal in find_mirrors(crystal)
+    ]
     inverting = any(operation.improper and operation.turn == 1 for operation in crystal.operations)
     for axis, proper, inverse in find_axes(crystal):
         shown = screen @ axis
