@@ -82,5 +82,11 @@ export const postSeries = (id, parent, change, place) => ask("POST", `${at(id)}/
 export const postCifs = (id, parent, texts) => ask("POST", `${at(id)}/series/cifs`, { parent, texts });
 /** @param {string} id @param {number} parent @param {number} place */
 export const useSeries = (id, parent, place) => ask("POST", `${at(id)}/series/use`, { parent, at: place });
+/** @param {string} id */
+export const fetchCut = (id) => ask("GET", `${at(id)}/cut`);
+/** @param {string} id @param {number} parent @param {object} body */
+export const postCut = (id, parent, body) => ask("POST", `${at(id)}/cut`, { parent, ...body });
+/** @param {string} id @param {object[]} conditions */
+export const seekCut = (id, conditions) => ask("POST", `${at(id)}/cut/seek`, { conditions });
 /** A calculation call. @param {string} name @param {object} body */
 export const call = (name, body) => ask("POST", `/api/v1/${name}`, body);

@@ -21,7 +21,7 @@ from app.web.typesetting import typeset
 
 router = APIRouter(include_in_schema=False)
 
-PAGES = (("tensor", "Tensor"), ("readings", "Readings"), ("series", "Series"), ("sheet", "Sheet"))
+PAGES = (("tensor", "Tensor"), ("readings", "Readings"), ("cut", "Cut"), ("series", "Series"), ("sheet", "Sheet"))
 """The pages of a sample that are there, in the order of the way through it."""
 
 

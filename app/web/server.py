@@ -11,15 +11,18 @@ from app.store import open_store
 from app.version import VERSION
 from app.web import (
     calculation,
+    cut_page,
     error_answers,
     live,
     pages,
     readings_page,
     readings_table,
     samples,
+    seek_calls,
     series_calls,
     series_page,
     sheet_page,
+    stage_calls,
     static_files,
     tensor_page,
 )
@@ -68,11 +71,15 @@ def create_app(data_dir: Path | None = None) -> FastAPI:
     app.include_router(live.router)
     app.include_router(readings_page.router)
     app.include_router(readings_table.router)
+    app.include_router(cut_page.page_router)
+    app.include_router(cut_page.router)
     app.include_router(series_page.page_router)
     app.include_router(series_page.router)
     app.include_router(sheet_page.router)
+    app.include_router(stage_calls.router)
     app.include_router(calculation.router)
     app.include_router(series_calls.router)
+    app.include_router(seek_calls.router)
     app.include_router(static_files.router)
     app.mount("/static", static_files.RevalidatedFiles(directory=static_folder()), name="static")
     return app

@@ -111,10 +111,12 @@ def draw_stereogram(
         if trace.kind in ABOVE:
             parts += _draw_trace(trace, screen, projection)
     taken: list[tuple[float, float]] = []
+    # What can be pressed may not stand within a picture.
+    role = "group" if any(mark.put for mark in picture.marks) else "img"
     for mark in picture.marks:
         parts += _draw_mark(mark, screen, projection, taken)
     return (
-        f'<svg class="stereogram" viewBox="-122 -116 244 232" role="img" aria-label="{escape(title, quote=True)}">'
+        f'<svg class="stereogram" viewBox="-122 -116 244 232" role="{role}" aria-label="{escape(title, quote=True)}">'
         f"{''.join(parts)}</svg>"
     )
 

@@ -1,0 +1,1 @@
+"""Where to cut: directions that answer a question, what a miscut costs, sightings, stage settings."""

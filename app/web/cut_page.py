@@ -1,0 +1,250 @@
+"""The Cut page and the calls that change a sample's parts."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import replace
+from typing import Annotated, Any, Final, Literal
+
+from fastapi import APIRouter, Request, Response
+from pydantic import Field
+
+from app.crystal.crystal import Crystal
+from app.crystal.direction import typeset_indices
+from app.cutting.nearby import Nearby, list_nearby
+from app.cutting.seek import Condition, Sought, seek
+from app.errors import InputError, located
+from app.store.document import SampleDocument, change_document, find_property
+from app.store.revisions import Kept
+from app.tensor.sentence import place_direction, print_angle
+from app.web import responses
+from app.web.answers import JsonAnswer
+from app.web.bodies import StrictRoute
+from app.web.changes import Typed
+from app.web.cut_view import NEW_PART, current_part, describe_cut, list_parts
+from app.web.kept import crystal_for, crystal_of, entry_of, print_own_unit, render_sample, tensor_of
+from app.web.pages import render_page, templates
+from app.web.parts import Number, Part
+from app.web.samples import save_change, store_of
+from app.web.stereogram import Mark, Picture, Trace, draw_stereogram
+from app.web.stereogram_view import list_poles
+
+page_router = APIRouter(include_in_schema=False)
+router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.ERROR_RESPONSES)
+
+MOST_PARTS = 100
+LONGEST_EDGE = 10_000.0
+NEAR = 3.0
+MOST_NEAR = 16
+KINDS: Final[tuple[Literal["normal", "row"], ...]] = ("normal", "row")
+
+
+class TargetPart(Part):
+    """What a part is cut for."""
+
+    by: Literal["direction", "offcut", "principal", "pose", "vector"]
+    direction: Typed | None = None
+    from_: Typed | None = Field(None, alias="from")
+    tilt: Number | None = None
+    toward: Typed | None = None
+    axis: Literal["x", "y", "z", 1, 2, 3] | None = None
+    xyz: Annotated[list[Number], Field(min_length=3, max_length=3)] | None = None
+    name: Typed | None = None
+
+
+class TolerancePart(Part):
+    """How far off the part may be: a half-angle in degrees, or a change of the value."""
+
+    half_angle: Annotated[float, Field(ge=0, le=90)] | None = None
+    value: Annotated[float, Field(ge=0)] | None = None
+
+
+class PartChange(Part):
+    """What of a part is changed; what is left out stays."""
+
+    name: Typed | None = None
+    shape: Literal["plate", "wafer", "bar", "cube", "prism"] | None = None
+    size: Annotated[list[Number], Field(min_length=3, max_length=3)] | None = Field(None, description="mm")
+    target: TargetPart | None = None
+    edge: Typed | None = Field(None, description="direction toward which x points")
+    tolerance: TolerancePart | None = None
+    kerf: Annotated[float, Field(ge=0, le=100)] | None = Field(None, description="mm")
+    stock: Annotated[float, Field(ge=0, le=100)] | None = Field(None, description="mm on each face")
+
+
+class PartRequest(Part):
+    """A change of the parts, and the revision that it was made from. One of make, choose, remove or change."""
+
+    parent: int = Field(ge=1)
+    make: bool = False
+    choose: Typed | None = Field(None, description="id of the part to look at")
+    remove: Typed | None = Field(None, description="id of the part to take out")
+    change: PartChange | None = Field(None, description="of the part that is looked at")
+
+
+class SoughtCondition(Part):
+    """What is wanted of one property of the sample."""
+
+    property: Typed = Field(description="its id")
+    target: Number | Literal["max", "min"]
+
+
+class SeekRequest(Part):
+    """Directions that meet one or two conditions."""
+
+    conditions: Annotated[list[SoughtCondition], Field(min_length=1, max_length=2)]
+
+
+@page_router.get("/samples/{sample_id}/cut")
+def cut_page(sample_id: str, request: Request) -> Response:
+    """From a question to a part."""
+    return render_page(request, "cut.html", sample_id, "cut", **describe_cut(store_of(request).samples.get(sample_id)))
+
+
+@router.get("/{sample_id}/cut", summary="The part that is looked at, with what follows from it")
+def show(sample_id: str, request: Request) -> JsonAnswer:
+    """``result`` is a piece of the page."""
+    return JsonAnswer(_render(store_of(request).samples.get(sample_id)))
+
+
+@router.post("/{sample_id}/cut", summary="Make, choose, remove or change a part")
+def change(sample_id: str, given: PartRequest, request: Request) -> JsonAnswer:
+    """A target that cannot be read is refused at its field."""
+    store = store_of(request)
+    kept = store.samples.get(sample_id, given.parent)
+    document = _apply(kept.document, given)
+    if given.change is not None:
+        _refuse_unreadable(replace(kept, document=document))
+    return JsonAnswer(_render(save_change(store, sample_id, document, given.parent)))
+
+
+@router.post("/{sample_id}/cut/seek", summary="Directions that answer one or two conditions, with what a miscut costs")
+def find(sample_id: str, given: SeekRequest, request: Request) -> JsonAnswer:
+    """``result`` is a piece of the page; nothing is kept."""
+    document = store_of(request).samples.get(sample_id).document
+    crystal = crystal_of(document.crystal)
+    conditions: list[Condition] = []
+    named = []
+    for number, wanted in enumerate(given.conditions):
+        with located(f"conditions[{number}].property"):
+            kept = find_property(document, wanted.property)
+        estimate = tensor_of(crystal_for(crystal, document.crystal, entry_of(kept)), kept).estimate
+        conditions.append(Condition(estimate.matrix, wanted.target))
+        unit = print_own_unit(kept.unit)
+        named.append({"name": kept.name, "unit": "" if unit == "1" else unit})
+    sought = seek(conditions)
+    content = {
+        "sentence": sought.sentence,
+        "properties": named,
+        "lines": [
+            {
+                "xyz": line.tolist(),
+                "place": place_direction(crystal, line).text,
+                "values": [_print(value) for value in values],
+                "slopes": [_print(slope) for slope in slopes],
+            }
+            for line, values, slopes in zip(
+                sought.locus.lines, sought.values.tolist(), sought.slopes.tolist(), strict=True
+            )
+        ],
+        "near": [
+            {
+                "text": near.text,
+                "name": typeset_indices(near.text),
+                "off": print_angle(near.off),
+                "values": [_print(value) for value in near.values.tolist()],
+            }
+            for near in _list_near(crystal, sought)
+        ],
+        "below": None if sought.fraction_below is None else f"{100 * sought.fraction_below:.4g} %",
+        "stereogram": draw_stereogram(
+            crystal,
+            Picture(
+                [Mark(line, "target", "", line=True) for line in sought.locus.lines] + list_poles(crystal),
+                [Trace(curve, "answer") for curve in sought.curves],
+            ),
+            title=f"Stereogram: {sought.sentence}",
+        ),
+    }
+    piece = templates.get_template("cut_sought.html").render(content)
+    return JsonAnswer({"sentence": sought.sentence, "result": piece})
+
+
+def _list_near(crystal: Crystal, sought: Sought) -> list[Nearby]:
+    found = [
+        near for kind in KINDS for near in list_nearby(crystal, sought.locus, sought.conditions, kind, within=NEAR)
+    ]
+    return sorted(found, key=lambda near: near.off)[:MOST_NEAR]
+
+
+def _print(value: float) -> str:
+    return f"{value:.5g}".replace("-", "−")
+
+
+def _apply(document: SampleDocument, given: PartRequest) -> SampleDocument:
+    parts = list_parts(document)
+    current = current_part(document)
+    looking = dict(document.plain()["looking"])
+    if given.make:
+        if len(parts) >= MOST_PARTS:
+            raise InputError(f"A sample has at most {MOST_PARTS} parts.", field="make", hint="Remove one, or copy it.")
+        numbers = {part["id"] for part in parts}
+        number = next(n for n in range(1, MOST_PARTS + 2) if f"part{n}" not in numbers)
+        start = current or NEW_PART
+        parts.append({**start, "id": f"part{number}", "name": f"Part {number}", "achieved": None})
+        looking["part"] = f"part{number}"
+    elif given.choose is not None:
+        looking["part"] = _require(parts, given.choose, "choose")["id"]
+    elif given.remove is not None:
+        gone = _require(parts, given.remove, "remove")
+        parts = [part for part in parts if part is not gone]
+    elif given.change is not None:
+        if current is None:
+            raise InputError("There is no part to change.", field="change", hint="Make one first.")
+        parts = [_change(part, given.change) if part["id"] == current["id"] else part for part in parts]
+    return change_document(document, {"parts": parts, "looking": looking})
+
+
+def _require(parts: list[dict[str, Any]], wanted: str, field: str) -> dict[str, Any]:
+    found = next((part for part in parts if part["id"] == wanted), None)
+    if found is None:
+        raise InputError("There is no such part.", field=field, hint="It may have been removed elsewhere.")
+    return found
+
+
+def _change(part: Mapping[str, Any], given: PartChange) -> dict[str, Any]:
+    named = given.model_dump(by_alias=True, exclude_none=True)
+    if "name" in named and not named["name"].strip():
+        raise InputError("A part needs a name.", field="change.name", hint="Type one, like B4.")
+    for place, edge in enumerate(named.get("size", [])):
+        if not 0 < edge <= LONGEST_EDGE:
+            raise InputError(
+                "An edge of the part is a length above 0 mm.", field=f"change.size[{place}]", hint="Give millimetres."
+            )
+    if "tolerance" in named and len(named["tolerance"]) != 1:
+        raise InputError(
+            "A tolerance is a half-angle or a change of the value, one of the two.", field="change.tolerance"
+        )
+    return {**part, **named}
+
+
+def _refuse_unreadable(kept: Kept) -> None:
+    """Raise what would stand on the page instead of a result, where it is about what was typed."""
+    problem = describe_cut(kept)["problem"]
+    if problem is not None and str(problem["field"] or "").startswith("part"):
+        raise InputError(
+            problem["message"], field=str(problem["field"]).replace("part", "change", 1), hint=problem["hint"]
+        )
+
+
+def _render(kept: Kept) -> dict[str, Any]:
+    content = describe_cut(kept)
+    return {
+        "sample": render_sample(kept),
+        "part": content["part"],
+        "headline": content["headline"],
+        "second_line": content["second_line"],
+        "problem": content["problem"],
+        "form": templates.get_template("cut_form.html").render(content),
+        "result": templates.get_template("cut_result.html").render(content),
+    }

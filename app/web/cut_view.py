@@ -1,0 +1,235 @@
+"""What the Cut page shows: the part's target, what a miscut costs, candidates over every property, the part itself."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Any, Final
+
+import numpy as np
+import numpy.typing as npt
+
+from app.crystal.crystal import Crystal
+from app.cutting.miscut import Miscut, find_allowed_miscut, measure_miscut
+from app.errors import HalfturnError, InputError, located
+from app.store.canonical import plain
+from app.store.document import KeptProperty, SampleDocument, current_property
+from app.store.revisions import Kept
+from app.tensor.estimate import Estimate
+from app.tensor.lock import explain_cells
+from app.tensor.pose import Pose
+from app.tensor.principal import Principal, find_principal
+from app.tensor.printing import print_value
+from app.tensor.sentence import print_angle
+from app.tensor.tensor import PropertyTensor
+from app.tensor.values import compute_values
+from app.web.cut_target import DEFAULT_TARGET, WAYS, Target, find_part_pose, find_target
+from app.web.kept import crystal_for, crystal_of, entry_of, print_own_unit, tensor_of
+from app.web.part_drawing import draw_blade, draw_part
+from app.web.part_view import KERF, SHAPES, STOCK, describe_part
+from app.web.posed import render_number
+from app.web.stereogram import Mark, Picture, draw_stereogram
+from app.web.stereogram_view import list_poles, list_principal, list_specimen, trace_levels
+
+FloatArray = npt.NDArray[np.float64]
+
+NEW_PART: Final = {
+    "name": "Part 1",
+    "shape": "plate",
+    "size": [5.0, 5.0, 0.5],
+    "target": DEFAULT_TARGET,
+    "edge": "[1 0 0]",
+    "tolerance": {"half_angle": 0.5},
+    "kerf": KERF,
+    "stock": STOCK,
+    "achieved": None,
+}
+
+
+def list_parts(document: SampleDocument) -> list[dict[str, Any]]:
+    """The kept parts with what they leave open filled in."""
+    return [{**NEW_PART, **plain(part)} for part in document.parts]
+
+
+def current_part(document: SampleDocument) -> dict[str, Any] | None:
+    """The part that is looked at: the one chosen, else the last; None where there is none."""
+    parts = list_parts(document)
+    chosen = document.looking.get("part")
+    found = next((part for part in parts if part["id"] == chosen), None)
+    return found or (parts[-1] if parts else None)
+
+
+def describe_cut(kept: Kept) -> dict[str, Any]:
+    """Everything of the page; ``problem`` says why something cannot be computed."""
+    document = kept.document
+    part = current_part(document)
+    content: dict[str, Any] = {
+        "parts": [{"id": entry["id"], "name": entry["name"]} for entry in list_parts(document)],
+        "part": part,
+        "ways": WAYS,
+        "shapes": SHAPES,
+        "headline": "No part yet.",
+        "second_line": "Make one: say what its face or length shall lie along, and how far the saw may be off.",
+        "target": None,
+        "tolerance": None,
+        "candidates": [],
+        "result": None,
+        "problem": None,
+        "unit": "",
+        "properties": [{"id": entry.id, "name": entry.name} for entry in document.properties],
+    }
+    if part is None:
+        return content
+    try:
+        crystal = crystal_of(document.crystal)
+        shown = _require(document)
+        content |= _describe(crystal, document, shown, part)
+    except HalfturnError as error:
+        content["headline"] = f"{part['name']} cannot be worked out."
+        content["second_line"] = error.message
+        content["problem"] = {"message": error.message, "hint": error.hint, "field": error.field}
+    return content
+
+
+def _require(document: SampleDocument) -> KeptProperty:
+    shown = current_property(document)
+    if shown is None:
+        raise InputError(
+            "This sample has no property to cut for.", hint="Add one in the strip, under property and unit."
+        )
+    return shown
+
+
+def _describe(
+    crystal: Crystal, document: SampleDocument, shown: KeptProperty, part: Mapping[str, Any]
+) -> dict[str, Any]:
+    entry = entry_of(shown)
+    tensor = tensor_of(crystal_for(crystal, document.crystal, entry), shown)
+    principal = find_principal(tensor.estimate)
+    with located("part.target"):
+        target = find_target(crystal, principal, document, part["target"])
+    with located("part"):
+        pose = find_part_pose(crystal, target, str(part["edge"]))
+    unit = print_own_unit(shown.unit)
+    unit = "" if unit == "1" else unit
+    miscut = _find_miscut(tensor.estimate, target.vector, part["tolerance"])
+    other = {"rod": "long bar", "plate": "wide plate"}.get(
+        "rod" if entry.long_bar == "rod" else "plate" if entry.plate == "rod" else ""
+    )
+    value = print_value(miscut.nominal, miscut.sigma)
+    described = describe_part(crystal, tensor.estimate, other, part, pose)
+    return {
+        "unit": unit,
+        "headline": f"{part['name']}, along {target.name}: {value} {unit}".rstrip() + ".",
+        "second_line": f"Off by up to {print_angle(miscut.half_angle)} it reads {_print_range(miscut)} {unit}".rstrip()
+        + ".",
+        "target": {"name": target.name, "place": target.place},
+        "tolerance": _describe_miscut(miscut, part["tolerance"], unit),
+        "candidates": _compare(crystal, document, part, target),
+        "result": {
+            **{key: described[key] for key in ("size", "raw", "judged", "cuts", "reads")},
+            "other": other,
+            "frame": f"z along {target.name}, x as near to {part['edge']} as it can be, y = z × x",
+            "cells": _render_cells(crystal, tensor, described["posed"], pose),
+            "drawing": draw_part(described["size"], str(part["shape"])),
+            "blade": draw_blade(float(part["kerf"]), float(part["stock"])),
+            "stereogram": _draw(crystal, tensor, principal, target, pose),
+        },
+    }
+
+
+def _find_miscut(estimate: Estimate, vector: FloatArray, tolerance: Mapping[str, Any]) -> Miscut:
+    with located("part.tolerance"):
+        if tolerance.get("value") is not None:
+            return find_allowed_miscut(estimate, vector, float(tolerance["value"]))
+        return measure_miscut(estimate, vector, float(tolerance.get("half_angle", 0.5)))
+
+
+def _print_range(miscut: Miscut) -> str:
+    spread = max(abs(miscut.highest - miscut.nominal), abs(miscut.nominal - miscut.lowest))
+    digits = 4 if spread == 0 else max(4, int(np.ceil(np.log10(max(abs(miscut.nominal), spread) / spread))) + 2)
+    low, high = (f"{number:.{min(digits, 9)}g}".replace("-", "−") for number in (miscut.lowest, miscut.highest))
+    return f"{low} to {high}"
+
+
+def _describe_miscut(miscut: Miscut, tolerance: Mapping[str, Any], unit: str) -> dict[str, Any]:
+    """The value, its slope and extremes, and where the uncertainty comes from."""
+    tilted = max(miscut.highest - miscut.nominal, miscut.nominal - miscut.lowest)
+    budget = [{"source": "measurement σ", "value": None if miscut.sigma is None else f"{miscut.sigma:.2g}"}]
+    # The cap is taken as twice the standard deviation of the tilt.
+    budget.append({"source": "miscut, half the largest change in the cone", "value": f"{tilted / 2:.2g}"})
+    together = float(np.hypot(miscut.sigma or 0.0, tilted / 2))
+    budget.append({"source": "together", "value": f"{together:.2g}"})
+    return {
+        "asked": "value" if tolerance.get("value") is not None else "half_angle",
+        "nominal": print_value(miscut.nominal, miscut.sigma),
+        "slope": f"{miscut.slope:.3g}",
+        "lowest": f"{miscut.lowest:.6g}".replace("-", "−"),
+        "highest": f"{miscut.highest:.6g}".replace("-", "−"),
+        "half_angle": print_angle(miscut.half_angle),
+        "budget": budget,
+        "unit": unit,
+    }
+
+
+def _compare(
+    crystal: Crystal, document: SampleDocument, part: Mapping[str, Any], target: Target
+) -> list[dict[str, Any]]:
+    """Every property of the sample along the target."""
+    rows = []
+    for kept in document.properties:
+        try:
+            estimate = tensor_of(crystal_for(crystal, document.crystal, entry_of(kept)), kept).estimate
+            found = _find_miscut(estimate, target.vector, {"half_angle": part["tolerance"].get("half_angle", 0.5)})
+        except HalfturnError as error:
+            rows.append({"name": kept.name, "value": "–", "range": error.message, "unit": ""})
+            continue
+        unit = print_own_unit(kept.unit)
+        rows.append(
+            {
+                "name": kept.name,
+                "value": print_value(found.nominal, found.sigma),
+                "range": _print_range(found),
+                "unit": "" if unit == "1" else unit,
+            }
+        )
+    return rows
+
+
+def _render_cells(crystal: Crystal, tensor: PropertyTensor, posed: Estimate, pose: Pose) -> list[list[dict[str, Any]]]:
+    sigmas = posed.sigma_matrix
+    cells = [
+        {
+            "state": "zero" if lock.state == "zero" else "free",
+            "because": lock.because,
+            "equals": lock.equals,
+            "number": render_number(
+                0.0 if lock.state == "zero" else float(posed.matrix.flat[place]),
+                None if sigmas is None or lock.state == "zero" else float(sigmas.flat[place]),
+            ),
+        }
+        for place, lock in enumerate(explain_cells(crystal, tensor.form, pose.matrix))
+    ]
+    return [cells[0:3], cells[3:6], cells[6:9]]
+
+
+def _draw(crystal: Crystal, tensor: PropertyTensor, principal: Principal, target: Target, pose: Pose) -> str:
+    marks = [Mark(target.vector, "target", "target", line=True), *list_principal(principal)]
+    marks += list_specimen(pose.matrix) + list_poles(crystal, 1, ("normal", "row"))
+    title = f"Stereogram with the target {target.name}, the part's axes and the principal axes"
+    return draw_stereogram(crystal, Picture(marks, trace_levels(tensor.estimate.matrix)), title=title)
+
+
+def list_values(document: SampleDocument, crystal: Crystal, vectors: FloatArray) -> list[dict[str, Any]]:
+    """The value of every property along directions (n, 3): name, unit and numbers."""
+    rows = []
+    for kept in document.properties:
+        estimate = tensor_of(crystal_for(crystal, document.crystal, entry_of(kept)), kept).estimate
+        rows.append(
+            {
+                "id": kept.id,
+                "name": kept.name,
+                "unit": print_own_unit(kept.unit),
+                "values": compute_values(estimate.matrix, vectors).tolist(),
+            }
+        )
+    return rows

@@ -1,0 +1,41 @@
+// Pure: from a field of the part's form to the change that is sent. No browser, no server.
+
+import { readNumber } from "./format.js";
+
+/** What a field stands for. @typedef {{path?: string, target?: string, tolerance?: string, size?: string, number?: string}} Field */
+
+/** @param {string} text @param {string} field @returns {number} */
+function require(text, field) {
+  const value = readNumber(text);
+  if (Number.isNaN(value)) throw { field, message: text.trim() ? `“${text}” is not a number.` : "A number is missing here.", hint: "Write it with a decimal point." };
+  return value;
+}
+
+/** The change of the part that a typed field means. Throws {field, message, hint}.
+ * @param {any} part as it is kept @param {Field} field @param {string} text @returns {any} */
+export function changeOf(part, field, text) {
+  if (field.path) return { [field.path]: text };
+  if (field.number) return { [field.number]: require(text, field.number) };
+  if (field.size !== undefined) return { size: part.size.map((/** @type {number} */ edge, /** @type {number} */ k) => (k === Number(field.size) ? require(text, "size") : edge)) };
+  if (field.tolerance) return text.trim() ? { tolerance: { [field.tolerance]: require(text, "tolerance") } } : null;
+  if (!field.target) return null;
+  if (field.target === "by") return { target: startWay(text, part.target) };
+  const value = field.target === "tilt" ? require(text, "target.tilt") : field.target === "axis" ? Number(text) : text;
+  const { by, ...rest } = part.target;
+  const target = { by, ...rest, [field.target]: value };
+  // An off-cut is sent when all three of its fields are there.
+  if (by === "offcut" && (target.tilt === undefined || !target.from || !target.toward)) return null;
+  return { target };
+}
+
+/** What a way starts from. @param {string} by @param {any} old */
+function startWay(by, old) {
+  if (by === "direction") return { by, direction: old.direction ?? "(0 0 1)" };
+  if (by === "offcut") return { by, from: old.from ?? old.direction ?? "(0 0 1)", tilt: old.tilt ?? 0, toward: old.toward ?? "[1 0 0]" };
+  if (by === "principal") return { by, axis: typeof old.axis === "number" ? old.axis : 1 };
+  return { by, axis: "z" };
+}
+
+/** The conditions of a search from its fields; throws at ``conditions``. @param {{property: string, kind: string, value: string}[]} fields */
+export const conditionsOf = (fields) =>
+  fields.filter((field) => field.property).map((field, index) => ({ property: field.property, target: field.kind === "value" ? require(field.value, `conditions[${index}].target`) : field.kind }));
