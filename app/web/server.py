@@ -14,6 +14,7 @@ from app.web import (
     cut_page,
     error_answers,
     live,
+    optics_calls,
     pages,
     readings_page,
     readings_table,
@@ -79,6 +80,7 @@ def create_app(data_dir: Path | None = None) -> FastAPI:
     app.include_router(stage_calls.router)
     app.include_router(calculation.router)
     app.include_router(series_calls.router)
+    app.include_router(optics_calls.router)
     app.include_router(seek_calls.router)
     app.include_router(static_files.router)
     app.mount("/static", static_files.RevalidatedFiles(directory=static_folder()), name="static")
