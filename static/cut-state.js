@@ -2,7 +2,7 @@
 
 import { readNumber } from "./format.js";
 
-/** What a field stands for. @typedef {{path?: string, target?: string, tolerance?: string, size?: string, number?: string}} Field */
+/** What a field stands for. @typedef {{path?: string, target?: string, tolerance?: string, size?: string, number?: string, flag?: string}} Field */
 
 /** @param {string} text @param {string} field @returns {number} */
 function require(text, field) {
@@ -12,8 +12,9 @@ function require(text, field) {
 }
 
 /** The change of the part that a typed field means. Throws {field, message, hint}.
- * @param {any} part as it is kept @param {Field} field @param {string} text @returns {any} */
-export function changeOf(part, field, text) {
+ * @param {any} part as it is kept @param {Field} field @param {string} text @param {boolean} [checked] @returns {any} */
+export function changeOf(part, field, text, checked = false) {
+  if (field.flag) return { [field.flag]: checked };
   if (field.path) return { [field.path]: text };
   if (field.number) return { [field.number]: require(text, field.number) };
   if (field.size !== undefined) return { size: part.size.map((/** @type {number} */ edge, /** @type {number} */ k) => (k === Number(field.size) ? require(text, "size") : edge)) };
@@ -39,3 +40,22 @@ function startWay(by, old) {
 /** The conditions of a search from its fields; throws at ``conditions``. @param {{property: string, kind: string, value: string}[]} fields */
 export const conditionsOf = (fields) =>
   fields.filter((field) => field.property).map((field, index) => ({ property: field.property, target: field.kind === "value" ? require(field.value, `conditions[${index}].target`) : field.kind }));
+
+/** Sightings from the rows of the table; an empty new row is left out. Throws at the row that cannot be read.
+ * @param {string[][]} rows direction first, then one text per axis */
+export const sightingsOf = (rows) =>
+  rows.filter((row) => row.some((text) => text.trim())).map(([direction, ...angles], index) => ({ direction: direction.trim(), angles: angles.map((text) => require(text, `sightings[${index}]`)) }));
+
+/** A stage with what was typed in place of what stands; throws at a number that cannot be read.
+ * @param {any} stage @param {Record<string, string>} fields name, sight, blade @param {Record<string, string>[]} axes */
+export function stageOf(stage, fields, axes) {
+  const vector = (/** @type {string} */ text, /** @type {string} */ field) => text.trim().split(/[\s,;]+/).map((part) => require(part, field));
+  const { questions: _asked, ...kept } = stage;
+  return {
+    ...kept,
+    name: fields.name,
+    sight: vector(fields.sight, "sight"),
+    blade: vector(fields.blade, "blade"),
+    axes: axes.map((axis, index) => ({ name: axis.name, axis: vector(axis.axis, `axes[${index}]`), ...Object.fromEntries(["low", "high", "zero", "step"].map((key) => [key, require(axis[key], `axes[${index}].${key}`)])), sense: Number(axis.sense) })),
+  };
+}

@@ -1,15 +1,17 @@
 // The Cut page: every field is taken as it is changed; what follows is set by the server.
 
-import { changeOf, conditionsOf } from "./cut-state.js";
+import { changeOf, conditionsOf, sightingsOf, stageOf } from "./cut-state.js";
 import { clearFaults, showFault } from "./faults.js";
 import { currentSample, take } from "./page.js";
-import { fetchCut, postCut, seekCut } from "./server.js";
+import { fetchCut, fetchStages, postCut, postStages, seekCut } from "./server.js";
 import { typeset } from "./typeset.js";
 
 const get = (/** @type {string} */ id) => /** @type {any} */ (document.getElementById(id));
 const holder = get("cut-form");
 let revision = currentSample().revision;
 let part = currentPart(currentSample());
+let stage = JSON.parse(get("cut-content").textContent);
+const mounting = get("cut-stage");
 
 /** @param {any} sample */
 function currentPart(sample) {
@@ -26,6 +28,10 @@ function show(answer) {
   get("second-line").replaceChildren(...typeset(answer.second_line));
   holder.innerHTML = answer.form;
   get("cut-result").innerHTML = answer.result;
+  const open = get("stage-fold")?.open;
+  mounting.innerHTML = answer.mounting;
+  get("stage-fold").open = Boolean(open);
+  stage = answer.stage;
   if (focus) get(focus)?.focus();
 }
 
@@ -42,7 +48,7 @@ async function send(body) {
 
 holder.addEventListener("change", (/** @type {any} */ event) => {
   try {
-    const change = changeOf(part, event.target.dataset, event.target.value);
+    const change = changeOf(part, event.target.dataset, event.target.value, event.target.checked);
     if (change) send({ change });
   } catch (fault) {
     clearFaults(get("part-form"));
@@ -56,6 +62,43 @@ holder.addEventListener("click", (/** @type {any} */ event) => {
   if (act === "make") send({ make: true });
   if (act === "choose") send({ choose: id });
   if (act === "remove") send({ remove: id });
+});
+
+/** The rows of the table of sightings as they stand. @param {number} [without] */
+const rowsOf = (without = -1) => [...mounting.querySelectorAll("#sightings tbody tr")].filter((_, index) => index !== without).map((row) => [...row.querySelectorAll("input")].map((input) => input.value));
+/** @param {number} [without] */
+async function takeSightings(without) {
+  const form = get("sighting-form");
+  clearFaults(form);
+  try {
+    show(await take((id, parent) => postCut(id, parent, { sightings: sightingsOf(rowsOf(without)) })));
+    get("sighting-new-direction").focus();
+  } catch (failure) {
+    const fault = /** @type {any} */ (failure);
+    showFault(form, { ...fault, message: fault.message, hint: fault.hint, field: "sightings" });
+  }
+}
+/** @param {boolean} another */
+async function keepStage(another) {
+  const form = get("stage-form");
+  clearFaults(form);
+  try {
+    const value = (/** @type {string} */ key) => form.querySelector(`[data-stage="${key}"]`).value;
+    const axes = [...form.querySelectorAll("[data-axis]")].map((row) => Object.fromEntries([...row.querySelectorAll("[data-key]")].map((field) => [field.dataset.key, field.value])));
+    const made = { ...stageOf(stage, { name: value("name"), sight: value("sight"), blade: value("blade") }, axes), ...(another ? { id: `stage${Date.now()}` } : {}) };
+    const all = (await fetchStages()).map((/** @type {any} */ { questions: _asked, ...kept }) => kept);
+    await postStages(another ? [...all, made] : all.map((/** @type {any} */ kept) => (kept.id === made.id ? made : kept)));
+    show(another ? await take((id, parent) => postCut(id, parent, { stage: made.id })) : await fetchCut(currentSample().id));
+  } catch (failure) {
+    showFault(form, /** @type {any} */ (failure));
+  }
+}
+mounting.addEventListener("submit", (/** @type {any} */ event) => { event.preventDefault(); if (event.target.id === "stage-form") keepStage(false); else takeSightings(); });
+mounting.addEventListener("change", (/** @type {any} */ event) => { if (event.target.id === "stage-choice") send({ stage: event.target.value }); });
+mounting.addEventListener("click", (/** @type {any} */ event) => {
+  const { act, row } = event.target.dataset ?? {};
+  if (act === "drop-sighting") takeSightings(Number(row));
+  if (act === "copy-stage") keepStage(true);
 });
 
 get("seek-form")?.addEventListener("submit", async (/** @type {Event} */ event) => {

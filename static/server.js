@@ -88,5 +88,8 @@ export const fetchCut = (id) => ask("GET", `${at(id)}/cut`);
 export const postCut = (id, parent, body) => ask("POST", `${at(id)}/cut`, { parent, ...body });
 /** @param {string} id @param {object[]} conditions */
 export const seekCut = (id, conditions) => ask("POST", `${at(id)}/cut/seek`, { conditions });
+export const fetchStages = () => ask("GET", "/api/stages");
+/** @param {object[]} stages */
+export const postStages = (stages) => ask("POST", "/api/stages", { stages });
 /** A calculation call. @param {string} name @param {object} body */
 export const call = (name, body) => ask("POST", `/api/v1/${name}`, body);

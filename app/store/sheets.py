@@ -6,13 +6,16 @@ import json
 import sqlite3
 from collections.abc import Mapping
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, Final
 
 from app.errors import NotFoundError
-from app.store.canonical import canonical_json, content_hash
+from app.store.canonical import canonical_json, content_hash, plain
 from app.store.database import Database
 from app.store.document import SampleDocument, find_property, readings_of
 from app.store.revisions import find_document
+
+PART_KEY: Final = "part_id"
+"""The key of a sheet's content that names the part which it is for; a sheet of the tensor has none."""
 
 
 @dataclass(frozen=True)
@@ -33,19 +36,23 @@ class Sheet:
     superseded: bool
 
 
-def hash_inputs(document: SampleDocument, property_id: str) -> str:
+def hash_inputs(document: SampleDocument, property_id: str, part_id: str | None = None) -> str:
     """Return the hash of what a sheet of this property is made from: crystal, property, its readings with the batch
-    uncertainties, pose and part. Raises InputError where the property is missing."""
-    return content_hash(
-        {
-            "crystal": document.crystal.plain(),
-            "property": find_property(document, property_id).plain(),
-            "readings": [reading.plain() for reading in readings_of(document, property_id)],
-            "batches": document.batches,
-            "pose": document.pose,
-            "part": document.part,
-        }
-    )
+    uncertainties, pose and block; of a sheet for a part that part and the sightings in place of the block. Raises
+    InputError where the property is missing."""
+    inputs: dict[str, Any] = {
+        "crystal": document.crystal.plain(),
+        "property": find_property(document, property_id).plain(),
+        "readings": [reading.plain() for reading in readings_of(document, property_id)],
+        "batches": document.batches,
+        "pose": document.pose,
+    }
+    if part_id is None:
+        inputs["part"] = document.part
+    else:
+        inputs["part"] = next((part for part in map(plain, document.parts) if part.get("id") == part_id), None)
+        inputs["sightings"] = document.sightings
+    return content_hash(inputs)
 
 
 class Sheets:
@@ -65,7 +72,7 @@ class Sheets:
             document = find_document(connection, sample_id, revision)
             last = connection.execute("SELECT max(number) FROM sheet").fetchone()[0]
             number = int(last or 0) + 1
-            inputs_hash = hash_inputs(document, property_id)
+            inputs_hash = hash_inputs(document, property_id, content.get(PART_KEY))
             connection.execute(
                 "INSERT INTO sheet (number, sample_id, revision, property_id, inputs_hash, json, created) "
                 "VALUES (?, ?, ?, ?, ?, ?, ?)",
@@ -108,16 +115,17 @@ def _sheets(connection: sqlite3.Connection, where: str, values: tuple[Any, ...])
 
 
 def _is_superseded(connection: sqlite3.Connection, row: sqlite3.Row, present: SampleDocument) -> bool:
-    now = _hash_or_none(present, row["property_id"])
+    part_id = json.loads(row["json"]).get(PART_KEY)
+    now = _hash_or_none(present, row["property_id"], part_id)
     if now is None or now == row["inputs_hash"]:
         return now is None
     # A later version of this program may write a field that the sheet's hash did not know. Then both sides read
     # alike: what the sheet was made from is itself still there, as its revision.
     then = find_document(connection, row["sample_id"], row["revision"])
-    return now != _hash_or_none(then, row["property_id"])
+    return now != _hash_or_none(then, row["property_id"], part_id)
 
 
-def _hash_or_none(document: SampleDocument, property_id: str) -> str | None:
+def _hash_or_none(document: SampleDocument, property_id: str, part_id: str | None) -> str | None:
     if all(item.id != property_id for item in document.properties):
         return None
-    return hash_inputs(document, property_id)
+    return hash_inputs(document, property_id, part_id)

@@ -14,6 +14,7 @@ from app.crystal.direction import typeset_indices
 from app.cutting.nearby import Nearby, list_nearby
 from app.cutting.seek import Condition, Sought, seek
 from app.errors import InputError, located
+from app.store import Store
 from app.store.document import SampleDocument, change_document, find_property
 from app.store.revisions import Kept
 from app.tensor.sentence import place_direction, print_angle
@@ -23,9 +24,11 @@ from app.web.bodies import StrictRoute
 from app.web.changes import Typed
 from app.web.cut_view import NEW_PART, current_part, describe_cut, list_parts
 from app.web.kept import crystal_for, crystal_of, entry_of, print_own_unit, render_sample, tensor_of
-from app.web.pages import render_page, templates
+from app.web.pages import embed_json, render_page, templates
 from app.web.parts import Number, Part
 from app.web.samples import save_change, store_of
+from app.web.sightings_view import check_sightings, take_sightings
+from app.web.stages import find_stage, list_stages
 from app.web.stereogram import Mark, Picture, Trace, draw_stereogram
 from app.web.stereogram_view import list_poles
 
@@ -70,16 +73,31 @@ class PartChange(Part):
     tolerance: TolerancePart | None = None
     kerf: Annotated[float, Field(ge=0, le=100)] | None = Field(None, description="mm")
     stock: Annotated[float, Field(ge=0, le=100)] | None = Field(None, description="mm on each face")
+    either_sense: bool | None = Field(None, description="whether the face may look the other way")
+    equivalents: bool | None = Field(None, description="whether a direction that the group makes equal will do")
+
+
+class SightingPart(Part):
+    """A direction and the dial readings at which it was brought to the stage's line of sight."""
+
+    direction: Typed
+    angles: Annotated[list[Number], Field(min_length=1, max_length=3)]
+    weight: Annotated[float, Field(gt=0)] | None = None
+    note: Typed | None = None
 
 
 class PartRequest(Part):
-    """A change of the parts, and the revision that it was made from. One of make, choose, remove or change."""
+    """A change of the parts, the stage or the sightings, and the revision that it was made from; one of them."""
 
     parent: int = Field(ge=1)
     make: bool = False
     choose: Typed | None = Field(None, description="id of the part to look at")
     remove: Typed | None = Field(None, description="id of the part to take out")
     change: PartChange | None = Field(None, description="of the part that is looked at")
+    stage: Typed | None = Field(None, description="id of the stage that is used")
+    sightings: Annotated[list[SightingPart], Field(max_length=100)] | None = Field(
+        None, description="all sightings, in place of those that stand"
+    )
 
 
 class SoughtCondition(Part):
@@ -98,13 +116,16 @@ class SeekRequest(Part):
 @page_router.get("/samples/{sample_id}/cut")
 def cut_page(sample_id: str, request: Request) -> Response:
     """From a question to a part."""
-    return render_page(request, "cut.html", sample_id, "cut", **describe_cut(store_of(request).samples.get(sample_id)))
+    store = store_of(request)
+    content = describe_cut(store.samples.get(sample_id), list_stages(store))
+    return render_page(request, "cut.html", sample_id, "cut", stage_json=embed_json(content["stage"]), **content)
 
 
 @router.get("/{sample_id}/cut", summary="The part that is looked at, with what follows from it")
 def show(sample_id: str, request: Request) -> JsonAnswer:
     """``result`` is a piece of the page."""
-    return JsonAnswer(_render(store_of(request).samples.get(sample_id)))
+    store = store_of(request)
+    return JsonAnswer(_render(store, store.samples.get(sample_id)))
 
 
 @router.post("/{sample_id}/cut", summary="Make, choose, remove or change a part")
@@ -113,9 +134,15 @@ def change(sample_id: str, given: PartRequest, request: Request) -> JsonAnswer:
     store = store_of(request)
     kept = store.samples.get(sample_id, given.parent)
     document = _apply(kept.document, given)
+    if given.sightings is not None:
+        stage = find_stage(store, document.looking.get("stage"))
+        sightings = [sighting.model_dump(exclude_none=True) for sighting in given.sightings]
+        check_sightings(sightings, stage)
+        take_sightings(crystal_of(document.crystal), stage, sightings)
+        document = change_document(document, {"sightings": sightings})
     if given.change is not None:
-        _refuse_unreadable(replace(kept, document=document))
-    return JsonAnswer(_render(save_change(store, sample_id, document, given.parent)))
+        _refuse_unreadable(store, replace(kept, document=document))
+    return JsonAnswer(_render(store, save_change(store, sample_id, document, given.parent)))
 
 
 @router.post("/{sample_id}/cut/seek", summary="Directions that answer one or two conditions, with what a miscut costs")
@@ -198,6 +225,8 @@ def _apply(document: SampleDocument, given: PartRequest) -> SampleDocument:
     elif given.remove is not None:
         gone = _require(parts, given.remove, "remove")
         parts = [part for part in parts if part is not gone]
+    elif given.stage is not None:
+        looking["stage"] = given.stage
     elif given.change is not None:
         if current is None:
             raise InputError("There is no part to change.", field="change", hint="Make one first.")
@@ -228,23 +257,25 @@ def _change(part: Mapping[str, Any], given: PartChange) -> dict[str, Any]:
     return {**part, **named}
 
 
-def _refuse_unreadable(kept: Kept) -> None:
+def _refuse_unreadable(store: Store, kept: Kept) -> None:
     """Raise what would stand on the page instead of a result, where it is about what was typed."""
-    problem = describe_cut(kept)["problem"]
+    problem = describe_cut(kept, list_stages(store))["problem"]
     if problem is not None and str(problem["field"] or "").startswith("part"):
         raise InputError(
             problem["message"], field=str(problem["field"]).replace("part", "change", 1), hint=problem["hint"]
         )
 
 
-def _render(kept: Kept) -> dict[str, Any]:
-    content = describe_cut(kept)
+def _render(store: Store, kept: Kept) -> dict[str, Any]:
+    content = describe_cut(kept, list_stages(store))
     return {
         "sample": render_sample(kept),
         "part": content["part"],
         "headline": content["headline"],
         "second_line": content["second_line"],
         "problem": content["problem"],
+        "stage": content["stage"],
         "form": templates.get_template("cut_form.html").render(content),
+        "mounting": templates.get_template("cut_stage.html").render(content),
         "result": templates.get_template("cut_result.html").render(content),
     }

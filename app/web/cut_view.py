@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 from typing import Any, Final
 
 import numpy as np
@@ -10,6 +10,7 @@ import numpy.typing as npt
 
 from app.crystal.crystal import Crystal
 from app.cutting.miscut import Miscut, find_allowed_miscut, measure_miscut
+from app.cutting.transfer import Transfer
 from app.errors import HalfturnError, InputError, located
 from app.store.canonical import plain
 from app.store.document import KeptProperty, SampleDocument, current_property
@@ -27,6 +28,8 @@ from app.web.kept import crystal_for, crystal_of, entry_of, print_own_unit, tens
 from app.web.part_drawing import draw_blade, draw_part
 from app.web.part_view import KERF, SHAPES, STOCK, describe_part
 from app.web.posed import render_number
+from app.web.sightings_view import describe_attitude, describe_settings
+from app.web.stages import describe_stage, read_transfer
 from app.web.stereogram import Mark, Picture, draw_stereogram
 from app.web.stereogram_view import list_poles, list_principal, list_specimen, trace_levels
 
@@ -41,6 +44,8 @@ NEW_PART: Final = {
     "tolerance": {"half_angle": 0.5},
     "kerf": KERF,
     "stock": STOCK,
+    "either_sense": True,
+    "equivalents": False,
     "achieved": None,
 }
 
@@ -58,11 +63,23 @@ def current_part(document: SampleDocument) -> dict[str, Any] | None:
     return found or (parts[-1] if parts else None)
 
 
-def describe_cut(kept: Kept) -> dict[str, Any]:
-    """Everything of the page; ``problem`` says why something cannot be computed."""
+def describe_cut(kept: Kept, stages: Sequence[Mapping[str, Any]]) -> dict[str, Any]:
+    """Everything of the page; ``problem`` says why something cannot be computed.
+
+    Args:
+        kept: the sample.
+        stages: the laboratory's, the first one the usual.
+    """
     document = kept.document
     part = current_part(document)
+    stage = next((entry for entry in stages if entry["id"] == document.looking.get("stage")), stages[0])
+    sightings = [plain(entry) for entry in document.sightings]
     content: dict[str, Any] = {
+        "stages": [{"id": entry["id"], "name": entry["name"]} for entry in stages],
+        "stage": describe_stage(stage),
+        "sightings": sightings,
+        "attitude": None,
+        "settings": None,
         "parts": [{"id": entry["id"], "name": entry["name"]} for entry in list_parts(document)],
         "part": part,
         "ways": WAYS,
@@ -77,14 +94,20 @@ def describe_cut(kept: Kept) -> dict[str, Any]:
         "unit": "",
         "properties": [{"id": entry.id, "name": entry.name} for entry in document.properties],
     }
-    if part is None:
-        return content
     try:
         crystal = crystal_of(document.crystal)
+        content["attitude"], attitude = describe_attitude(crystal, stage, sightings)
+        if part is None:
+            return content
         shown = _require(document)
-        content |= _describe(crystal, document, shown, part)
+        described, target = _describe(crystal, document, shown, part, read_transfer(stage))
+        content |= described
+        if attitude is not None:
+            content["settings"] = describe_settings(crystal, stage, attitude, target, part)
     except HalfturnError as error:
-        content["headline"] = f"{part['name']} cannot be worked out."
+        content["headline"] = (
+            "This sample cannot be worked out." if part is None else f"{part['name']} cannot be worked out."
+        )
         content["second_line"] = error.message
         content["problem"] = {"message": error.message, "hint": error.hint, "field": error.field}
     return content
@@ -100,8 +123,12 @@ def _require(document: SampleDocument) -> KeptProperty:
 
 
 def _describe(
-    crystal: Crystal, document: SampleDocument, shown: KeptProperty, part: Mapping[str, Any]
-) -> dict[str, Any]:
+    crystal: Crystal,
+    document: SampleDocument,
+    shown: KeptProperty,
+    part: Mapping[str, Any],
+    transfer: Transfer | None,
+) -> tuple[dict[str, Any], Target]:
     entry = entry_of(shown)
     tensor = tensor_of(crystal_for(crystal, document.crystal, entry), shown)
     principal = find_principal(tensor.estimate)
@@ -117,13 +144,13 @@ def _describe(
     )
     value = print_value(miscut.nominal, miscut.sigma)
     described = describe_part(crystal, tensor.estimate, other, part, pose)
-    return {
+    answer = {
         "unit": unit,
         "headline": f"{part['name']}, along {target.name}: {value} {unit}".rstrip() + ".",
         "second_line": f"Off by up to {print_angle(miscut.half_angle)} it reads {_print_range(miscut)} {unit}".rstrip()
         + ".",
         "target": {"name": target.name, "place": target.place},
-        "tolerance": _describe_miscut(miscut, part["tolerance"], unit),
+        "tolerance": _describe_miscut(miscut, part["tolerance"], unit, transfer),
         "candidates": _compare(crystal, document, part, target),
         "result": {
             **{key: described[key] for key in ("size", "raw", "judged", "cuts", "reads")},
@@ -135,6 +162,7 @@ def _describe(
             "stereogram": _draw(crystal, tensor, principal, target, pose),
         },
     }
+    return answer, target
 
 
 def _find_miscut(estimate: Estimate, vector: FloatArray, tolerance: Mapping[str, Any]) -> Miscut:
@@ -151,13 +179,19 @@ def _print_range(miscut: Miscut) -> str:
     return f"{low} to {high}"
 
 
-def _describe_miscut(miscut: Miscut, tolerance: Mapping[str, Any], unit: str) -> dict[str, Any]:
+def _describe_miscut(
+    miscut: Miscut, tolerance: Mapping[str, Any], unit: str, transfer: Transfer | None
+) -> dict[str, Any]:
     """The value, its slope and extremes, and where the uncertainty comes from."""
     tilted = max(miscut.highest - miscut.nominal, miscut.nominal - miscut.lowest)
     budget = [{"source": "measurement σ", "value": None if miscut.sigma is None else f"{miscut.sigma:.2g}"}]
     # The cap is taken as twice the standard deviation of the tilt.
     budget.append({"source": "miscut, half the largest change in the cone", "value": f"{tilted / 2:.2g}"})
-    together = float(np.hypot(miscut.sigma or 0.0, tilted / 2))
+    carried = 0.0
+    if transfer is not None and transfer.sigma is not None:
+        carried = miscut.slope * transfer.sigma
+        budget.append({"source": "transfer from bench to saw", "value": f"{carried:.2g}"})
+    together = float(np.linalg.norm([miscut.sigma or 0.0, tilted / 2, carried]))
     budget.append({"source": "together", "value": f"{together:.2g}"})
     return {
         "asked": "value" if tolerance.get("value") is not None else "half_angle",

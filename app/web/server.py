@@ -16,6 +16,7 @@ from app.web import (
     live,
     optics_calls,
     pages,
+    part_sheet,
     readings_page,
     readings_table,
     samples,
@@ -24,6 +25,7 @@ from app.web import (
     series_page,
     sheet_page,
     stage_calls,
+    stages,
     static_files,
     tensor_page,
 )
@@ -72,8 +74,10 @@ def create_app(data_dir: Path | None = None) -> FastAPI:
     app.include_router(live.router)
     app.include_router(readings_page.router)
     app.include_router(readings_table.router)
+    app.include_router(part_sheet.router)
     app.include_router(cut_page.page_router)
     app.include_router(cut_page.router)
+    app.include_router(stages.router)
     app.include_router(series_page.page_router)
     app.include_router(series_page.router)
     app.include_router(sheet_page.router)

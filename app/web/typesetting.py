@@ -32,3 +32,33 @@ def typeset(text: Any) -> Markup:
         at = found.end()
     parts.append(str(escape(given[at:])))
     return Markup("".join(parts))
+
+
+INDEX_FORM: Final = re.compile(r"[\[(][^\])]*[\])]")
+
+
+def set_overbars(text: str) -> str:
+    """A sentence as HTML in which negative whole indices within brackets have an overbar in place of the minus sign.
+
+    Indices of one digit stand close, as in print; larger ones stay apart.
+    """
+    parts: list[str] = []
+    at = 0
+    for found in INDEX_FORM.finditer(text):
+        parts.append(str(typeset(text[at : found.start()])))
+        parts.append(_set_indices(found[0]))
+        at = found.end()
+    parts.append(str(typeset(text[at:])))
+    return "".join(parts)
+
+
+def _set_indices(form: str) -> str:
+    inner = form[1:-1]
+    words = inner.split() if " " in inner.strip() else re.findall(r"[-−]?\d", inner)
+    if not words or not all(re.fullmatch(r"[-−]?\d+", word) for word in words):
+        return str(escape(form))
+    bars = [
+        f'<span class="bar-over">{escape(word[1:])}</span>' if word[0] in "-−" else str(escape(word)) for word in words
+    ]
+    gap = "" if all(len(word.lstrip("-−")) == 1 for word in words) else " "
+    return f"{escape(form[0])}{gap.join(bars)}{escape(form[-1])}"
