@@ -2,16 +2,19 @@
 
 import { changeOf, conditionsOf, sightingsOf, stageOf } from "./cut-state.js";
 import { clearFaults, showFault } from "./faults.js";
-import { currentSample, take } from "./page.js";
+import { currentSample, take as takeChange } from "./page.js";
 import { fetchCut, fetchStages, postCut, postStages, seekCut } from "./server.js";
 import { typeset } from "./typeset.js";
 
 const get = (/** @type {string} */ id) => /** @type {any} */ (document.getElementById(id));
 const holder = get("cut-form");
-let revision = currentSample().revision;
+let revision = currentSample().revision, own = 0;
+/** A change of this page: the event that it causes is answered by what it brings. @type {typeof takeChange} */
+const take = async (send) => { own += 1; try { return await takeChange(send); } finally { own -= 1; } };
 let part = currentPart(currentSample());
 let stage = JSON.parse(get("cut-content").textContent);
 const mounting = get("cut-stage");
+let sightings = (currentSample().document.sightings ?? []).length;
 
 /** @param {any} sample */
 function currentPart(sample) {
@@ -29,7 +32,12 @@ function show(answer) {
   holder.innerHTML = answer.form;
   get("cut-result").innerHTML = answer.result;
   const open = get("stage-fold")?.open;
+  // What is typed for a new sighting and not yet taken stays.
+  const typed = [...mounting.querySelectorAll("tr.new input")].map((input) => input.value);
+  const taken = (answer.sample.document.sightings ?? []).length !== sightings;
+  sightings = (answer.sample.document.sightings ?? []).length;
   mounting.innerHTML = answer.mounting;
+  if (!taken) [...mounting.querySelectorAll("tr.new input")].forEach((input, index) => { input.value = typed[index] ?? ""; });
   get("stage-fold").open = Boolean(open);
   stage = answer.stage;
   if (focus) get(focus)?.focus();
@@ -129,7 +137,7 @@ for (const name of ["click", "keydown"]) {
 }
 document.addEventListener("sample", async (event) => {
   const sample = /** @type {CustomEvent} */ (event).detail;
-  if (sample.revision === revision) return;
+  if (own || sample.revision === revision) return;
   revision = sample.revision;
   try { show(await fetchCut(sample.id)); } catch { /* the header says that the server is gone */ }
 });

@@ -3,12 +3,15 @@
 import { clearFaults, showFault } from "./faults.js";
 import { readNumber } from "./format.js";
 import { el } from "./matrix.js";
-import { currentSample, take } from "./page.js";
+import { currentSample, take as takeChange } from "./page.js";
 import { fetchSeries, postCifs, postSeries, useSeries } from "./server.js";
 import { typeset } from "./typeset.js";
 
 const get = (/** @type {string} */ id) => /** @type {any} */ (document.getElementById(id));
 const form = get("series-form"), slider = get("at"), side = get("series-side");
+let own = 0;
+/** A change of this page: the event that it causes is answered by what it brings. @type {typeof takeChange} */
+const take = async (send) => { own += 1; try { return await takeChange(send); } finally { own -= 1; } };
 let revision = currentSample().revision, typed = false, asking = false, wanted = false;
 
 /** @param {any} answer */
@@ -105,5 +108,5 @@ get("files").addEventListener("change", () => takeFiles(get("files").files));
 for (const name of ["dragenter", "dragover"]) side.addEventListener(name, (/** @type {Event} */ event) => { event.preventDefault(); side.classList.add("dropping"); });
 side.addEventListener("dragleave", () => side.classList.remove("dropping"));
 side.addEventListener("drop", (/** @type {DragEvent} */ event) => { event.preventDefault(); side.classList.remove("dropping"); takeFiles(event.dataTransfer?.files); });
-document.addEventListener("sample", (event) => { if (/** @type {CustomEvent} */ (event).detail.revision !== revision) { revision = /** @type {CustomEvent} */ (event).detail.revision; ask(); } });
+document.addEventListener("sample", (event) => { if (own) return; if (/** @type {CustomEvent} */ (event).detail.revision !== revision) { revision = /** @type {CustomEvent} */ (event).detail.revision; ask(); } });
 window.addEventListener("beforeunload", (event) => { if (typed) event.preventDefault(); });

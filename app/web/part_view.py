@@ -69,7 +69,7 @@ def list_cuts(shape: str, size: tuple[float, float, float], pose: FloatArray, ke
                     face=f"{'+' if sign > 0 else '−'}{letter}",
                     normal=sign * pose[axis],
                     edge=across,
-                    kept=f"{'−' if sign > 0 else '+'}{letter} of the blade",
+                    kept=f"{'−' if sign > 0 else '+'}{letter} side",
                     # From the first face to the blade's near side of the opposite one.
                     distance=0.0 if first else float(size[axis]) + 2 * stock,
                 )
@@ -111,10 +111,10 @@ def describe_part(
             {
                 "number": cut.number,
                 "face": cut.face,
-                "normal": place_direction(crystal, cut.normal).text,
-                "edge": place_direction(crystal, cut.edge).text,
+                "normal": place_direction(crystal, cut.normal).text.removeprefix("on "),
+                "edge": place_direction(crystal, cut.edge).text.removeprefix("on "),
                 "kept": cut.kept,
-                "distance": "" if cut.distance == 0 else f"{cut.distance:.2f} mm from the face before",
+                "distance": "" if cut.distance == 0 else f"{cut.distance:.2f} mm",
             }
             for cut in cuts
         ],

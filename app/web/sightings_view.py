@@ -156,7 +156,7 @@ def _print_dials(axes: Sequence[Axis], dials: Sequence[float], stage: Mapping[st
     for number, (axis, dial) in enumerate(zip(axes, dials, strict=True)):
         step = float(stage["axes"][number].get("step") or 0.01)
         decimals = max(0, min(4, int(np.ceil(-np.log10(step) - 1e-9)))) if step > 0 else 2
-        text = f"{dial:+.{decimals}f}°".replace("-", "−")
+        text = f"{round(dial, decimals) + 0.0:+.{decimals}f}°".replace("-", "−")
         printed.append({"name": axis.name or f"axis {number + 1}", "angle": text})
     return printed
 
