@@ -91,5 +91,9 @@ export const seekCut = (id, conditions) => ask("POST", `${at(id)}/cut/seek`, { c
 export const fetchStages = () => ask("GET", "/api/stages");
 /** @param {object[]} stages */
 export const postStages = (stages) => ask("POST", "/api/stages", { stages });
+/** @param {string} id @param {object} asked */
+export const postConsequences = (id, asked) => ask("POST", `${at(id)}/consequences`, asked);
+/** @param {string} id @param {object} asked */
+export const askFrame = (id, asked) => ask("POST", `${at(id)}/frame-question`, asked);
 /** A calculation call. @param {string} name @param {object} body */
 export const call = (name, body) => ask("POST", `/api/v1/${name}`, body);

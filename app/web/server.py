@@ -11,8 +11,10 @@ from app.store import open_store
 from app.version import VERSION
 from app.web import (
     calculation,
+    consequences_page,
     cut_page,
     error_answers,
+    frame_question,
     live,
     optics_calls,
     pages,
@@ -74,8 +76,10 @@ def create_app(data_dir: Path | None = None) -> FastAPI:
     app.include_router(live.router)
     app.include_router(readings_page.router)
     app.include_router(readings_table.router)
+    app.include_router(frame_question.router)
     app.include_router(part_sheet.router)
     app.include_router(cut_page.page_router)
+    app.include_router(consequences_page.router)
     app.include_router(cut_page.router)
     app.include_router(stages.router)
     app.include_router(series_page.page_router)
