@@ -42,9 +42,18 @@ export const conditionsOf = (fields) =>
   fields.filter((field) => field.property).map((field, index) => ({ property: field.property, target: field.kind === "value" ? require(field.value, `conditions[${index}].target`) : field.kind }));
 
 /** Sightings from the rows of the table; an empty new row is left out. Throws at the row that cannot be read.
- * @param {string[][]} rows direction first, then one text per axis */
-export const sightingsOf = (rows) =>
-  rows.filter((row) => row.some((text) => text.trim())).map(([direction, ...angles], index) => ({ direction: direction.trim(), angles: angles.map((text) => require(text, `sightings[${index}]`)) }));
+ * @param {string[][]} rows direction first, then one text per axis @param {(number[]|null)[]} [toward] of each row, where it is not the line of sight */
+export const sightingsOf = (rows, toward = []) =>
+  rows.map((row, place) => ({ row, toward: toward[place] ?? null })).filter(({ row }) => row.some((text) => text.trim()))
+    .map(({ row: [direction, ...angles], toward: seen }, index) => ({ direction: direction.trim(), angles: angles.map((text) => require(text, `sightings[${index}]`)), ...(seen ? { toward: seen } : {}) }));
+
+/** Spots from lines of two numbers. Throws at the line that cannot be read. @param {string} text */
+export const spotsOf = (text) =>
+  text.split("\n").map((line) => line.trim()).filter(Boolean).map((line, index) => {
+    const parts = line.split(/[\s,;]+/);
+    if (parts.length !== 2) throw { field: `spots[${index}]`, message: `“${line}” is not a spot.`, hint: "Write x and y on a line." };
+    return parts.map((part) => require(part, `spots[${index}]`));
+  });
 
 /** A stage with what was typed in place of what stands; throws at a number that cannot be read.
  * @param {any} stage @param {Record<string, string>} fields name, sight, blade @param {Record<string, string>[]} axes */
@@ -58,4 +67,11 @@ export function stageOf(stage, fields, axes) {
     blade: vector(fields.blade, "blade"),
     axes: axes.map((axis, index) => ({ name: axis.name, axis: vector(axis.axis, `axes[${index}]`), ...Object.fromEntries(["low", "high", "zero", "step"].map((key) => [key, require(axis[key], `axes[${index}].${key}`)])), sense: Number(axis.sense) })),
   };
+}
+
+/** What was measured on the finished face, once its angle and its direction are there; else nothing. Throws at a text that is no number.
+ * @param {{tilt: string, toward: string, sigma: string}} fields */
+export function achievedOf({ tilt, toward, sigma }) {
+  if (!tilt.trim() || !toward.trim()) return null;
+  return { achieved: { tilt: require(tilt, "achieved.tilt"), toward, ...(sigma.trim() ? { sigma: require(sigma, "achieved.sigma") } : {}) } };
 }

@@ -1,9 +1,9 @@
 // The Cut page: every field is taken as it is changed; what follows is set by the server.
 
-import { changeOf, conditionsOf, sightingsOf, stageOf } from "./cut-state.js";
+import { achievedOf, changeOf, conditionsOf, sightingsOf, spotsOf, stageOf } from "./cut-state.js";
 import { clearFaults, showFault } from "./faults.js";
 import { currentSample, take as takeChange } from "./page.js";
-import { fetchCut, fetchStages, postCut, postStages, seekCut } from "./server.js";
+import { fetchCut, fetchStages, indexSpots, postCut, postStages, seekCut } from "./server.js";
 import { typeset } from "./typeset.js";
 
 const get = (/** @type {string} */ id) => /** @type {any} */ (document.getElementById(id));
@@ -56,7 +56,9 @@ async function send(body) {
 
 holder.addEventListener("change", (/** @type {any} */ event) => {
   try {
-    const change = changeOf(part, event.target.dataset, event.target.value, event.target.checked);
+    const change = event.target.dataset.achieved
+      ? achievedOf({ tilt: get("achieved-tilt").value, toward: get("achieved-toward").value, sigma: get("achieved-sigma").value })
+      : changeOf(part, event.target.dataset, event.target.value, event.target.checked);
     if (change) send({ change });
   } catch (fault) {
     clearFaults(get("part-form"));
@@ -70,16 +72,33 @@ holder.addEventListener("click", (/** @type {any} */ event) => {
   if (act === "make") send({ make: true });
   if (act === "choose") send({ choose: id });
   if (act === "remove") send({ remove: id });
+  if (act === "give") send({ give_readings: true });
 });
 
 /** The rows of the table of sightings as they stand. @param {number} [without] */
 const rowsOf = (without = -1) => [...mounting.querySelectorAll("#sightings tbody tr")].filter((_, index) => index !== without).map((row) => [...row.querySelectorAll("input")].map((input) => input.value));
+/** Where each row was brought, if not to the line of sight. @param {number} [without] */
+const towardOf = (without = -1) => [...mounting.querySelectorAll("#sightings tbody tr")].filter((_, index) => index !== without).map((row) => (row.dataset.toward ? JSON.parse(row.dataset.toward) : null));
+/** @type {any[]} */
+let assignments = [];
+async function takeSpots() {
+  const form = get("spots-form");
+  clearFaults(form);
+  try {
+    const angles = spotsOf(get("spots-dials").value.trim().split(/[\s,;]+/).map((/** @type {string} */ text) => `${text} 0`).join("\n")).map(([angle]) => angle);
+    const answer = await indexSpots(currentSample().id, { spots: spotsOf(get("spots").value), distance: Number(get("spots-distance").value.replace("−", "-")), side: get("spots-side").value, angles, tolerance: Number(get("spots-tolerance").value) });
+    assignments = answer.assignments;
+    get("spots-result").innerHTML = answer.result;
+  } catch (failure) {
+    showFault(form, /** @type {any} */ (failure));
+  }
+}
 /** @param {number} [without] */
 async function takeSightings(without) {
   const form = get("sighting-form");
   clearFaults(form);
   try {
-    show(await take((id, parent) => postCut(id, parent, { sightings: sightingsOf(rowsOf(without)) })));
+    show(await take((id, parent) => postCut(id, parent, { sightings: sightingsOf(rowsOf(without), towardOf(without)) })));
     get("sighting-new-direction").focus();
   } catch (failure) {
     const fault = /** @type {any} */ (failure);
@@ -101,10 +120,12 @@ async function keepStage(another) {
     showFault(form, /** @type {any} */ (failure));
   }
 }
-mounting.addEventListener("submit", (/** @type {any} */ event) => { event.preventDefault(); if (event.target.id === "stage-form") keepStage(false); else takeSightings(); });
+mounting.addEventListener("submit", (/** @type {any} */ event) => { event.preventDefault(); if (event.target.id === "stage-form") keepStage(false); else if (event.target.id === "spots-form") takeSpots(); else takeSightings(); });
 mounting.addEventListener("change", (/** @type {any} */ event) => { if (event.target.id === "stage-choice") send({ stage: event.target.value }); });
 mounting.addEventListener("click", (/** @type {any} */ event) => {
   const { act, row } = event.target.dataset ?? {};
+  const chosen = event.target.dataset?.useSpots;
+  if (chosen !== undefined) send({ sightings: [...sightingsOf(rowsOf(), towardOf()), ...assignments[Number(chosen)].sightings] });
   if (act === "drop-sighting") takeSightings(Number(row));
   if (act === "copy-stage") keepStage(true);
 });

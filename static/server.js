@@ -95,5 +95,7 @@ export const postStages = (stages) => ask("POST", "/api/stages", { stages });
 export const postConsequences = (id, asked) => ask("POST", `${at(id)}/consequences`, asked);
 /** @param {string} id @param {object} asked */
 export const askFrame = (id, asked) => ask("POST", `${at(id)}/frame-question`, asked);
+/** @param {string} id @param {object} asked */
+export const indexSpots = (id, asked) => ask("POST", `${at(id)}/cut/spots`, asked);
 /** A calculation call. @param {string} name @param {object} body */
 export const call = (name, body) => ask("POST", `/api/v1/${name}`, body);

@@ -19,6 +19,7 @@ from app.store.document import SampleDocument, change_document, find_property
 from app.store.revisions import Kept
 from app.tensor.sentence import place_direction, print_angle
 from app.web import responses
+from app.web.achieved import give_achieved
 from app.web.answers import JsonAnswer
 from app.web.bodies import StrictRoute
 from app.web.changes import Typed
@@ -28,6 +29,7 @@ from app.web.pages import embed_json, render_page, templates
 from app.web.parts import Number, Part
 from app.web.samples import save_change, store_of
 from app.web.sightings_view import check_sightings, take_sightings
+from app.web.stage_shapes import LabVector
 from app.web.stages import find_stage, list_stages
 from app.web.stereogram import Mark, Picture, Trace, draw_stereogram
 from app.web.stereogram_view import list_poles
@@ -62,6 +64,14 @@ class TolerancePart(Part):
     value: Annotated[float, Field(ge=0)] | None = None
 
 
+class AchievedPart(Part):
+    """The measured orientation of the finished face: so many degrees off the target, toward a direction."""
+
+    tilt: Annotated[float, Field(ge=0, le=90)]
+    toward: Typed
+    sigma: Annotated[float, Field(ge=0, le=30)] | None = Field(None, description="degrees")
+
+
 class PartChange(Part):
     """What of a part is changed; what is left out stays."""
 
@@ -73,6 +83,7 @@ class PartChange(Part):
     tolerance: TolerancePart | None = None
     kerf: Annotated[float, Field(ge=0, le=100)] | None = Field(None, description="mm")
     stock: Annotated[float, Field(ge=0, le=100)] | None = Field(None, description="mm on each face")
+    achieved: AchievedPart | None = Field(None, description="what the finished face was measured to be")
     either_sense: bool | None = Field(None, description="whether the face may look the other way")
     equivalents: bool | None = Field(None, description="whether a direction that the group makes equal will do")
 
@@ -82,6 +93,7 @@ class SightingPart(Part):
 
     direction: Typed
     angles: Annotated[list[Number], Field(min_length=1, max_length=3)]
+    toward: LabVector | None = Field(None, description="where it was brought; default the stage's line of sight")
     weight: Annotated[float, Field(gt=0)] | None = None
     note: Typed | None = None
 
@@ -94,6 +106,7 @@ class PartRequest(Part):
     choose: Typed | None = Field(None, description="id of the part to look at")
     remove: Typed | None = Field(None, description="id of the part to take out")
     change: PartChange | None = Field(None, description="of the part that is looked at")
+    give_readings: bool = Field(False, description="give the readings of the bar of its name what was achieved")
     stage: Typed | None = Field(None, description="id of the stage that is used")
     sightings: Annotated[list[SightingPart], Field(max_length=100)] | None = Field(
         None, description="all sightings, in place of those that stand"
@@ -225,6 +238,8 @@ def _apply(document: SampleDocument, given: PartRequest) -> SampleDocument:
     elif given.remove is not None:
         gone = _require(parts, given.remove, "remove")
         parts = [part for part in parts if part is not gone]
+    elif given.give_readings:
+        return give_achieved(document, current)
     elif given.stage is not None:
         looking["stage"] = given.stage
     elif given.change is not None:

@@ -23,6 +23,7 @@ from app.tensor.printing import print_value
 from app.tensor.sentence import print_angle
 from app.tensor.tensor import PropertyTensor
 from app.tensor.values import compute_values
+from app.web.achieved import describe_achieved
 from app.web.cut_target import DEFAULT_TARGET, WAYS, Target, find_part_pose, find_target
 from app.web.kept import crystal_for, crystal_of, entry_of, print_own_unit, tensor_of
 from app.web.part_drawing import draw_blade, draw_part
@@ -89,6 +90,7 @@ def describe_cut(kept: Kept, stages: Sequence[Mapping[str, Any]]) -> dict[str, A
         "target": None,
         "tolerance": None,
         "candidates": [],
+        "achieved": None,
         "result": None,
         "problem": None,
         "unit": "",
@@ -152,6 +154,7 @@ def _describe(
         "target": {"name": target.name, "place": target.place},
         "tolerance": _describe_miscut(miscut, part["tolerance"], unit, transfer),
         "candidates": _compare(crystal, document, part, target),
+        "achieved": describe_achieved(crystal, target, part),
         "result": {
             **{key: described[key] for key in ("size", "raw", "judged", "cuts", "reads")},
             "other": other,

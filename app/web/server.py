@@ -26,6 +26,7 @@ from app.web import (
     series_calls,
     series_page,
     sheet_page,
+    spots,
     stage_calls,
     stages,
     static_files,
@@ -81,6 +82,7 @@ def create_app(data_dir: Path | None = None) -> FastAPI:
     app.include_router(cut_page.page_router)
     app.include_router(consequences_page.router)
     app.include_router(cut_page.router)
+    app.include_router(spots.router)
     app.include_router(stages.router)
     app.include_router(series_page.page_router)
     app.include_router(series_page.router)

@@ -12,6 +12,7 @@ from app.crystal.crystal import Crystal
 from app.crystal.direction import read_direction, typeset_indices
 from app.cutting.attitude import Attitude, Sighting, find_attitude
 from app.cutting.equivalents import Equivalent, list_equivalents
+from app.cutting.further_sighting import propose_sighting
 from app.cutting.presets import name_lab
 from app.cutting.reach import find_closest
 from app.cutting.settings import Setting, find_settings, measure_sensitivity
@@ -36,7 +37,8 @@ def take_sightings(crystal: Crystal, stage: Mapping[str, Any], kept: Sequence[Ma
                 direction = read_direction(str(given["direction"]))
                 crystal.resolve(direction)
             turn = compute_turn(axes, [float(angle) for angle in given["angles"]])
-            taken.append(Sighting(direction, turn.T @ sight, float(given.get("weight") or 1.0)))
+            seen = read_lab(given["toward"], "toward") if given.get("toward") else sight
+            taken.append(Sighting(direction, turn.T @ seen, float(given.get("weight") or 1.0)))
     return taken
 
 
@@ -47,7 +49,8 @@ def describe_attitude(
     if not kept:
         return {"problem": None, "rows": [], "pairs": [], "notes": []}, None
     try:
-        found = find_attitude(crystal, take_sightings(crystal, stage, kept))
+        sightings = take_sightings(crystal, stage, kept)
+        found = find_attitude(crystal, sightings)
     except HalfturnError as error:
         return {
             "problem": {"message": error.message, "hint": error.hint, "field": error.field},
@@ -82,7 +85,26 @@ def describe_attitude(
         "rows": [print_angle(float(residual)) for residual in found.residuals],
         "pairs": pairs[:15],
         "notes": notes,
+        "further": _suggest(crystal, stage, found, sightings),
     }, found
+
+
+def _suggest(
+    crystal: Crystal, stage: Mapping[str, Any], attitude: Attitude, sightings: Sequence[Sighting]
+) -> dict[str, Any] | None:
+    """The best further sighting, with its dials; None once there are four, or where none is within reach."""
+    if len(sightings) > 3:
+        return None
+    axes = build_axes(stage)
+    found = propose_sighting(crystal, attitude, sightings, axes, read_lab(stage["sight"], "sight"))
+    if found is None:
+        return None
+    return {
+        "form": found.form,
+        "name": _name(found.form),
+        "dials": _print_dials(axes, found.setting.dials, stage),
+        "decides_hand": found.decides_hand,
+    }
 
 
 def _name(form: Any) -> str:

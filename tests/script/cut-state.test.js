@@ -1,7 +1,7 @@
 // From the fields of the Cut page to what is sent.
 import assert from "node:assert/strict";
 import { test } from "node:test";
-import { changeOf, conditionsOf, sightingsOf, stageOf } from "../../static/cut-state.js";
+import { achievedOf, changeOf, conditionsOf, sightingsOf, spotsOf, stageOf } from "../../static/cut-state.js";
 
 const part = { size: [3, 3, 18], target: { by: "direction", direction: "(1 0 0)" }, tolerance: { half_angle: 0.5 } };
 
@@ -48,4 +48,16 @@ test("a stage keeps its id and transfer and takes what was typed", () => {
   const stage = { id: "s", name: "old", transfer: [1], questions: ["?"], axes: [], sight: [1, 0, 0], blade: [1, 0, 0] };
   const made = stageOf(stage, { name: "new", sight: "0 1 0", blade: "0, 0, 1" }, [{ name: "turn", axis: "0 0 1", low: "-90", high: "90", zero: "0", step: "0.1", sense: "-1" }]);
   assert.deepEqual(made, { id: "s", name: "new", transfer: [1], sight: [0, 1, 0], blade: [0, 0, 1], axes: [{ name: "turn", axis: [0, 0, 1], low: -90, high: 90, zero: 0, step: 0.1, sense: -1 }] });
+});
+
+test("what was measured is sent when its angle and its direction are there", () => {
+  assert.equal(achievedOf({ tilt: "1.2", toward: " ", sigma: "" }), null);
+  assert.deepEqual(achievedOf({ tilt: "1.2", toward: "[0 1 0]", sigma: "" }), { achieved: { tilt: 1.2, toward: "[0 1 0]" } });
+  assert.throws(() => achievedOf({ tilt: "x", toward: "[0 1 0]", sigma: "" }), (/** @type {any} */ fault) => fault.field === "achieved.tilt");
+});
+
+test("a sighting brought elsewhere keeps where it was, and spots are read line by line", () => {
+  assert.deepEqual(sightingsOf([["(1 0 0)", "1"], ["", ""], ["(0 1 0)", "2"]], [null, null, [0, 0, 1]]), [{ direction: "(1 0 0)", angles: [1] }, { direction: "(0 1 0)", angles: [2], toward: [0, 0, 1] }]);
+  assert.deepEqual(spotsOf("1 −2\n\n3,4"), [[1, -2], [3, 4]]);
+  assert.throws(() => spotsOf("1 2 3"), (/** @type {any} */ fault) => fault.field === "spots[0]");
 });

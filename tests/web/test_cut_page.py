@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import re
+from itertools import product
 from pathlib import Path
 from typing import Any
 
@@ -250,3 +251,63 @@ def test_the_check_reflection_obeys_bragg_s_law(client: TestClient, sample: Any)
     # d(001) of a monoclinic cell is c sin β.
     assert spacing == pytest.approx(7.27 * np.sin(np.deg2rad(107.4)), abs=1e-4)
     assert order * wavelength == pytest.approx(2 * spacing * np.sin(np.deg2rad(two_theta / 2)), rel=1e-3)
+
+
+def test_spots_on_a_film_give_sightings_of_the_mounted_crystal(client: TestClient, sample: Any) -> None:
+    # Spots of a crystal mounted by a known turn, by the law of reflection, on a film 30 mm before it.
+    mounted = Rotation.from_euler("xyz", [12, -7, 33], degrees=True).as_matrix()
+    every = product(range(-3, 4), range(-2, 3), range(-3, 4))
+    texts = [f"({h} {k} {m})" for h, k, m in every if np.gcd.reduce([h, k, m]) == 1]
+    beam = np.array([1.0, 0, 0])
+    spots = []
+    for normal in vectors_of(client, sample, texts) @ mounted.T:
+        ray = beam - 2 * (beam @ normal) * normal
+        if normal[0] < 0 and ray[0] < -0.5:
+            spots.append([round(float(-ray[1] / -ray[0] * 30), 2), round(float(ray[2] / -ray[0] * 30), 2)])
+    assert len(spots) >= 5
+    answer = client.post(
+        f"/api/samples/{sample['id']}/cut/spots",
+        json={"spots": spots, "distance": 30, "side": "back", "angles": [0, 0, 0], "tolerance": 0.3},
+    )
+    assert answer.status_code == 200, answer.text
+    best = answer.json()["assignments"][0]
+    assert best["matched"] == len(spots)
+    taken = take(client, sample, sightings=best["sightings"])
+    assert "rms 0" in words(taken["mounting"]) or "rms 0.0" in words(taken["mounting"])
+    assert taken["sample"]["document"]["sightings"][0]["toward"] == pytest.approx(best["sightings"][0]["toward"])
+    refused = client.post(
+        f"/api/samples/{sample['id']}/cut/spots", json={"spots": spots, "distance": 30, "angles": [0]}
+    )
+    assert refused.status_code == 422
+    assert refused.json()["error"]["field"] == "angles"
+
+
+def test_what_was_achieved_becomes_the_direction_of_the_part_s_readings(client: TestClient, sample: Any) -> None:
+    made = take(client, sample, make=True)["sample"]
+    change = {
+        "name": "B4",
+        "target": {"by": "direction", "direction": "(0 0 1)"},
+        "achieved": {"tilt": 1.2, "toward": "[0 1 0]", "sigma": 0.1},
+        "tolerance": {"half_angle": 0.5},
+    }
+    answer = take(client, made, change=change)
+    assert "not within what was allowed" in words(answer["form"])
+    given = take(client, answer["sample"], give_readings=True)["sample"]
+    moved = next(reading for reading in given["document"]["readings"] if reading.get("bar") == "B4")
+    normal, along_b = vectors_of(client, sample, ["(0 0 1)", "[0 1 0]"])
+    vector = np.array(moved["direction"]["xyz"])
+    assert np.rad2deg(np.arccos(vector @ normal)) == pytest.approx(1.2, abs=1e-6)
+    assert vector @ along_b > 0
+    assert moved["direction_sigma"] == 0.1
+    # B4 is a bar of the demonstration's readings; a part of another name has none.
+    other = take(client, given, change={"name": "nameless"})["sample"]
+    refused = post(client, other, give_readings=True)
+    assert refused.status_code == 422
+    assert refused.json()["error"]["field"] == "give_readings"
+
+
+def test_the_next_sighting_is_named_with_its_dials(client: TestClient, sample: Any) -> None:
+    stage = client.get("/api/stages").json()[0]
+    mounted = Rotation.align_vectors([stage["sight"]], vectors_of(client, sample, ["(1 0 0)"]))[0].as_matrix()
+    answer = take(client, sample, sightings=sight(client, sample, stage, mounted, ["(1 0 0)", "(1 1 0)"]))
+    assert re.search(r"Sight n\([^)]+\) next: it decides the hand\. It will be at turn [+−]", words(answer["mounting"]))

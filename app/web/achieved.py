@@ -1,0 +1,86 @@
+"""The orientation of a finished part, measured afterwards, and as the direction of that part's readings."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from typing import Any
+
+import numpy as np
+import numpy.typing as npt
+
+from app.crystal.crystal import Crystal
+from app.crystal.direction import read_direction
+from app.errors import InputError, located
+from app.store.document import SampleDocument, change_document, current_property
+from app.tensor.pose import read_pose
+from app.tensor.principal import find_principal
+from app.tensor.sentence import place_direction, print_angle
+from app.web.cut_target import Target, find_target
+from app.web.kept import crystal_for, crystal_of, entry_of, tensor_of
+
+FloatArray = npt.NDArray[np.float64]
+
+
+def find_achieved(crystal: Crystal, target: Target, achieved: Mapping[str, Any]) -> FloatArray:
+    """The achieved normal, unit vector, crystal frame: the target tilted toward a direction.
+
+    Raises:
+        InputError: at ``toward``: it cannot be read, or lies along the target.
+    """
+    tilt = float(achieved["tilt"])
+    if tilt == 0:
+        return target.vector
+    with located("toward"):
+        toward = crystal.resolve(read_direction(str(achieved["toward"])))
+    pose = read_pose({"from": target.vector.tolist(), "tilt": tilt, "toward": toward.tolist()}, crystal)
+    vector: FloatArray = pose.matrix[2]
+    return vector
+
+
+def describe_achieved(crystal: Crystal, target: Target, part: Mapping[str, Any]) -> dict[str, Any] | None:
+    """Where the finished face lies, and whether that is within what was allowed; None until it was measured."""
+    achieved = part.get("achieved")
+    if achieved is None:
+        return None
+    with located("part.achieved"):
+        vector = find_achieved(crystal, target, achieved)
+    allowed = part["tolerance"].get("half_angle")
+    tilt = float(achieved["tilt"])
+    within = allowed is None or tilt <= float(allowed) + 1e-9
+    return {
+        "vector": vector.tolist(),
+        "place": place_direction(crystal, vector).text,
+        "tilt": print_angle(tilt),
+        "within": within,
+    }
+
+
+def give_achieved(document: SampleDocument, part: Mapping[str, Any] | None) -> SampleDocument:
+    """The document whose readings of the bar of the part's name have the achieved direction.
+
+    Raises:
+        InputError: there is no part, nothing was measured, or no reading names that bar.
+    """
+    shown = current_property(document)
+    if part is None or shown is None or part.get("achieved") is None:
+        raise InputError("Nothing was measured on the finished part yet.", field="give_readings")
+    crystal = crystal_of(document.crystal)
+    estimate = tensor_of(crystal_for(crystal, document.crystal, entry_of(shown)), shown).estimate
+    target = find_target(crystal, find_principal(estimate), document, part["target"])
+    vector = find_achieved(crystal, target, part["achieved"])
+    readings, changed = [], 0
+    for reading in document.readings:
+        plain = reading.plain()
+        if reading.property == shown.id and reading.bar == part["name"] and plain.get("direction") is not None:
+            plain |= {"direction": {"xyz": [float(x) for x in vector]}}
+            if part["achieved"].get("sigma") is not None:
+                plain["direction_sigma"] = float(part["achieved"]["sigma"])
+            changed += 1
+        readings.append(plain)
+    if not changed:
+        raise InputError(
+            f"No reading names the bar {part['name']}.",
+            field="give_readings",
+            hint="Give the part and the bar of its readings one name.",
+        )
+    return change_document(document, {"readings": readings})
