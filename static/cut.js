@@ -30,7 +30,9 @@ function show(answer) {
   get("headline").replaceChildren(...typeset(answer.headline));
   get("second-line").replaceChildren(...typeset(answer.second_line));
   holder.innerHTML = answer.form;
+  const unfolded = get("cut-result").querySelector("details")?.open;
   get("cut-result").innerHTML = answer.result;
+  if (unfolded) get("cut-result").querySelector("details").open = true;
   const open = get("stage-fold")?.open;
   // What is typed for a new sighting and not yet taken stays.
   const typed = [...mounting.querySelectorAll("tr.new input")].map((input) => input.value);
@@ -73,6 +75,7 @@ holder.addEventListener("click", (/** @type {any} */ event) => {
   if (act === "choose") send({ choose: id });
   if (act === "remove") send({ remove: id });
   if (act === "give") send({ give_readings: true });
+  if (act === "calibrate") send({ calibrate: true });
 });
 
 /** The rows of the table of sightings as they stand. @param {number} [without] */
@@ -141,7 +144,7 @@ get("seek-form")?.addEventListener("submit", async (/** @type {Event} */ event) 
     showFault(form, /** @type {any} */ (failure));
   }
 });
-get("sought").addEventListener("click", async (/** @type {any} */ event) => {
+for (const place of [get("sought"), get("cut-result")]) place.addEventListener("click", async (/** @type {any} */ event) => {
   const { cut, cutVector, name } = event.target.dataset ?? {};
   if (!cut && !cutVector) return;
   if (!part) await send({ make: true });
@@ -156,6 +159,7 @@ for (const name of ["click", "keydown"]) {
     if (part) send({ change: { target: { by: "direction", direction: put } } });
   });
 }
+get("cut-result").addEventListener("change", (/** @type {any} */ event) => { const { wish } = event.target.dataset; if (wish) send({ wishes: { [wish]: event.target.value } }); });
 document.addEventListener("sample", async (event) => {
   const sample = /** @type {CustomEvent} */ (event).detail;
   if (own || sample.revision === revision) return;

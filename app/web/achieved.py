@@ -10,13 +10,21 @@ import numpy.typing as npt
 
 from app.crystal.crystal import Crystal
 from app.crystal.direction import read_direction
+from app.cutting.attitude import find_attitude
+from app.cutting.settings import find_settings
+from app.cutting.stage import compute_turn, read_lab
 from app.errors import InputError, located
+from app.store import Store
+from app.store.canonical import plain
 from app.store.document import SampleDocument, change_document, current_property
 from app.tensor.pose import read_pose
 from app.tensor.principal import find_principal
 from app.tensor.sentence import place_direction, print_angle
 from app.web.cut_target import Target, find_target
 from app.web.kept import crystal_for, crystal_of, entry_of, tensor_of
+from app.web.kept_parts import current_part as current_part_of
+from app.web.sightings_view import take_sightings
+from app.web.stages import KEY, build_axes, find_stage, list_stages
 
 FloatArray = npt.NDArray[np.float64]
 
@@ -84,3 +92,37 @@ def give_achieved(document: SampleDocument, part: Mapping[str, Any] | None) -> S
             hint="Give the part and the bar of its readings one name.",
         )
     return change_document(document, {"readings": readings})
+
+
+def calibrate_saw(store: Store, document: SampleDocument) -> None:
+    """Keep what the saw made of the part with the laboratory's stage: the blade's normal meant, and the one achieved.
+
+    Raises:
+        InputError: nothing was measured, or the crystal is not sighted, so that the achieved normal is not known in the
+            laboratory.
+    """
+    part, shown = current_part_of(document), current_property(document)
+    if part is None or shown is None or part.get("achieved") is None:
+        raise InputError("Nothing was measured on the finished part yet.", field="calibrate")
+    crystal = crystal_of(document.crystal)
+    stage = find_stage(store, document.looking.get("stage"))
+    sightings = take_sightings(crystal, stage, [plain(entry) for entry in document.sightings])
+    attitude = find_attitude(crystal, sightings)
+    estimate = tensor_of(crystal_for(crystal, document.crystal, entry_of(shown)), shown).estimate
+    target = find_target(crystal, find_principal(estimate), document, part["target"])
+    axes, blade = build_axes(stage), read_lab(stage["blade"], "blade")
+    best: tuple[float, FloatArray] | None = None
+    for sense in (1, -1) if part.get("either_sense", True) else (1,):
+        for setting in find_settings(axes, sense * (attitude.matrix @ target.vector), blade):
+            if best is None or setting.travel < best[0]:
+                turn = compute_turn(axes, setting.dials)
+                achieved = find_achieved(crystal, target, part["achieved"])
+                best = (setting.travel, sense * (turn @ attitude.matrix @ achieved))
+    if best is None:
+        raise InputError("The target is not within reach of the stage, so it was cut otherwise.", field="calibrate")
+    cut = {"wanted": blade.tolist(), "achieved": best[1].tolist()}
+    stages = [
+        {**entry, "transfer": [*entry["transfer"], cut]} if entry["id"] == stage["id"] else entry
+        for entry in list_stages(store)
+    ]
+    store.laboratory.put(KEY, stages)

@@ -15,20 +15,22 @@ from app.cutting.nearby import Nearby, list_nearby
 from app.cutting.seek import Condition, Sought, seek
 from app.errors import InputError, located
 from app.store import Store
-from app.store.document import SampleDocument, change_document, find_property
+from app.store.document import SampleDocument, change_document
 from app.store.revisions import Kept
 from app.tensor.sentence import place_direction, print_angle
 from app.web import responses
-from app.web.achieved import give_achieved
+from app.web.achieved import calibrate_saw, give_achieved
 from app.web.answers import JsonAnswer
 from app.web.bodies import StrictRoute
 from app.web.changes import Typed
-from app.web.cut_view import NEW_PART, current_part, describe_cut, list_parts
-from app.web.kept import crystal_for, crystal_of, entry_of, print_own_unit, render_sample, tensor_of
+from app.web.cut_view import describe_cut
+from app.web.kept import crystal_of, render_sample
+from app.web.kept_parts import NEW_PART, current_part, list_parts
 from app.web.pages import embed_json, render_page, templates
 from app.web.parts import Number, Part
 from app.web.samples import save_change, store_of
 from app.web.sightings_view import check_sightings, take_sightings
+from app.web.sought import find_sought
 from app.web.stage_shapes import LabVector
 from app.web.stages import find_stage, list_stages
 from app.web.stereogram import Mark, Picture, Trace, draw_stereogram
@@ -83,6 +85,7 @@ class PartChange(Part):
     tolerance: TolerancePart | None = None
     kerf: Annotated[float, Field(ge=0, le=100)] | None = Field(None, description="mm")
     stock: Annotated[float, Field(ge=0, le=100)] | None = Field(None, description="mm on each face")
+    wedge: Annotated[float, Field(ge=0, le=30)] | None = Field(None, description="between the two faces, degrees")
     achieved: AchievedPart | None = Field(None, description="what the finished face was measured to be")
     either_sense: bool | None = Field(None, description="whether the face may look the other way")
     equivalents: bool | None = Field(None, description="whether a direction that the group makes equal will do")
@@ -107,6 +110,10 @@ class PartRequest(Part):
     remove: Typed | None = Field(None, description="id of the part to take out")
     change: PartChange | None = Field(None, description="of the part that is looked at")
     give_readings: bool = Field(False, description="give the readings of the bar of its name what was achieved")
+    calibrate: bool = Field(False, description="keep the part's achieved normal as a cut that calibrates the saw")
+    wishes: dict[Typed, Literal["largest", "smallest", "steady"]] | None = Field(
+        None, description="what is wanted of each property, by its id"
+    )
     stage: Typed | None = Field(None, description="id of the stage that is used")
     sightings: Annotated[list[SightingPart], Field(max_length=100)] | None = Field(
         None, description="all sightings, in place of those that stand"
@@ -116,7 +123,7 @@ class PartRequest(Part):
 class SoughtCondition(Part):
     """What is wanted of one property of the sample."""
 
-    property: Typed = Field(description="its id")
+    property: Typed = Field(description="its id, or rate:ID:ID for the change by temperature between two of one kind")
     target: Number | Literal["max", "min"]
 
 
@@ -146,6 +153,9 @@ def change(sample_id: str, given: PartRequest, request: Request) -> JsonAnswer:
     """A target that cannot be read is refused at its field."""
     store = store_of(request)
     kept = store.samples.get(sample_id, given.parent)
+    if given.calibrate:
+        calibrate_saw(store, kept.document)
+        return JsonAnswer(_render(store, kept))
     document = _apply(kept.document, given)
     if given.sightings is not None:
         stage = find_stage(store, document.looking.get("stage"))
@@ -167,11 +177,9 @@ def find(sample_id: str, given: SeekRequest, request: Request) -> JsonAnswer:
     named = []
     for number, wanted in enumerate(given.conditions):
         with located(f"conditions[{number}].property"):
-            kept = find_property(document, wanted.property)
-        estimate = tensor_of(crystal_for(crystal, document.crystal, entry_of(kept)), kept).estimate
-        conditions.append(Condition(estimate.matrix, wanted.target))
-        unit = print_own_unit(kept.unit)
-        named.append({"name": kept.name, "unit": "" if unit == "1" else unit})
+            sought_of = find_sought(crystal, document, wanted.property)
+        conditions.append(Condition(sought_of.matrix, wanted.target))
+        named.append({"name": sought_of.name, "unit": sought_of.unit})
     sought = seek(conditions)
     content = {
         "sentence": sought.sentence,
@@ -240,6 +248,8 @@ def _apply(document: SampleDocument, given: PartRequest) -> SampleDocument:
         parts = [part for part in parts if part is not gone]
     elif given.give_readings:
         return give_achieved(document, current)
+    elif given.wishes is not None:
+        looking["wishes"] = {**(looking.get("wishes") or {}), **given.wishes}
     elif given.stage is not None:
         looking["stage"] = given.stage
     elif given.change is not None:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from typing import Any, Final
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
@@ -22,46 +22,21 @@ from app.tensor.principal import Principal, find_principal
 from app.tensor.printing import print_value
 from app.tensor.sentence import print_angle
 from app.tensor.tensor import PropertyTensor
-from app.tensor.values import compute_values
 from app.web.achieved import describe_achieved
-from app.web.cut_target import DEFAULT_TARGET, WAYS, Target, find_part_pose, find_target
+from app.web.cut_comparison import compare_cuts
+from app.web.cut_target import WAYS, Target, find_part_pose, find_target
 from app.web.kept import crystal_for, crystal_of, entry_of, print_own_unit, tensor_of
+from app.web.kept_parts import current_part, list_parts
 from app.web.part_drawing import draw_blade, draw_part
-from app.web.part_view import KERF, SHAPES, STOCK, describe_part
+from app.web.part_view import SHAPES, describe_part
 from app.web.posed import render_number
 from app.web.sightings_view import describe_attitude, describe_settings
+from app.web.sought import list_sought
 from app.web.stages import describe_stage, read_transfer
 from app.web.stereogram import Mark, Picture, draw_stereogram
 from app.web.stereogram_view import list_poles, list_principal, list_specimen, trace_levels
 
 FloatArray = npt.NDArray[np.float64]
-
-NEW_PART: Final = {
-    "name": "Part 1",
-    "shape": "plate",
-    "size": [5.0, 5.0, 0.5],
-    "target": DEFAULT_TARGET,
-    "edge": "[1 0 0]",
-    "tolerance": {"half_angle": 0.5},
-    "kerf": KERF,
-    "stock": STOCK,
-    "either_sense": True,
-    "equivalents": False,
-    "achieved": None,
-}
-
-
-def list_parts(document: SampleDocument) -> list[dict[str, Any]]:
-    """The kept parts with what they leave open filled in."""
-    return [{**NEW_PART, **plain(part)} for part in document.parts]
-
-
-def current_part(document: SampleDocument) -> dict[str, Any] | None:
-    """The part that is looked at: the one chosen, else the last; None where there is none."""
-    parts = list_parts(document)
-    chosen = document.looking.get("part")
-    found = next((part for part in parts if part["id"] == chosen), None)
-    return found or (parts[-1] if parts else None)
 
 
 def describe_cut(kept: Kept, stages: Sequence[Mapping[str, Any]]) -> dict[str, Any]:
@@ -89,12 +64,13 @@ def describe_cut(kept: Kept, stages: Sequence[Mapping[str, Any]]) -> dict[str, A
         "second_line": "Make one: say what its face or length shall lie along, and how far the saw may be off.",
         "target": None,
         "tolerance": None,
-        "candidates": [],
+        "candidates": None,
+        "wedge": None,
         "achieved": None,
         "result": None,
         "problem": None,
         "unit": "",
-        "properties": [{"id": entry.id, "name": entry.name} for entry in document.properties],
+        "properties": list_sought(document),
     }
     try:
         crystal = crystal_of(document.crystal)
@@ -153,7 +129,8 @@ def _describe(
         + ".",
         "target": {"name": target.name, "place": target.place},
         "tolerance": _describe_miscut(miscut, part["tolerance"], unit, transfer),
-        "candidates": _compare(crystal, document, part, target),
+        "candidates": compare_cuts(crystal, document, principal, target),
+        "wedge": _describe_wedge(tensor.estimate, target.vector, part),
         "achieved": describe_achieved(crystal, target, part),
         "result": {
             **{key: described[key] for key in ("size", "raw", "judged", "cuts", "reads")},
@@ -208,28 +185,19 @@ def _describe_miscut(
     }
 
 
-def _compare(
-    crystal: Crystal, document: SampleDocument, part: Mapping[str, Any], target: Target
-) -> list[dict[str, Any]]:
-    """Every property of the sample along the target."""
-    rows = []
-    for kept in document.properties:
-        try:
-            estimate = tensor_of(crystal_for(crystal, document.crystal, entry_of(kept)), kept).estimate
-            found = _find_miscut(estimate, target.vector, {"half_angle": part["tolerance"].get("half_angle", 0.5)})
-        except HalfturnError as error:
-            rows.append({"name": kept.name, "value": "–", "range": error.message, "unit": ""})
-            continue
-        unit = print_own_unit(kept.unit)
-        rows.append(
-            {
-                "name": kept.name,
-                "value": print_value(found.nominal, found.sigma),
-                "range": _print_range(found),
-                "unit": "" if unit == "1" else unit,
-            }
-        )
-    return rows
+def _describe_wedge(estimate: Estimate, vector: FloatArray, part: Mapping[str, Any]) -> dict[str, str] | None:
+    """What a wedge between the two faces does, apart from the tilt of the first; None where none is allowed for."""
+    wedge = float(part.get("wedge") or 0.0)
+    if wedge <= 0:
+        return None
+    tilt = float(part["tolerance"].get("half_angle", 0.5))
+    second = measure_miscut(estimate, vector, min(90.0, tilt + wedge))
+    width = max(float(part["size"][0]), float(part["size"][1]))
+    return {
+        "wedge": print_angle(wedge),
+        "thickness": f"{1000.0 * width * float(np.tan(np.deg2rad(wedge))):.3g} µm",
+        "second": _print_range(second),
+    }
 
 
 def _render_cells(crystal: Crystal, tensor: PropertyTensor, posed: Estimate, pose: Pose) -> list[list[dict[str, Any]]]:
@@ -254,19 +222,3 @@ def _draw(crystal: Crystal, tensor: PropertyTensor, principal: Principal, target
     marks += list_specimen(pose.matrix) + list_poles(crystal, 1, ("normal", "row"))
     title = f"Stereogram with the target {target.name}, the part's axes and the principal axes"
     return draw_stereogram(crystal, Picture(marks, trace_levels(tensor.estimate.matrix)), title=title)
-
-
-def list_values(document: SampleDocument, crystal: Crystal, vectors: FloatArray) -> list[dict[str, Any]]:
-    """The value of every property along directions (n, 3): name, unit and numbers."""
-    rows = []
-    for kept in document.properties:
-        estimate = tensor_of(crystal_for(crystal, document.crystal, entry_of(kept)), kept).estimate
-        rows.append(
-            {
-                "id": kept.id,
-                "name": kept.name,
-                "unit": print_own_unit(kept.unit),
-                "values": compute_values(estimate.matrix, vectors).tolist(),
-            }
-        )
-    return rows

@@ -13,6 +13,8 @@ from fastapi.testclient import TestClient
 from scipy.optimize import least_squares
 from scipy.spatial.transform import Rotation
 
+from app.store import Store
+from app.store.document import change_document
 from app.web.server import create_app
 
 
@@ -311,3 +313,75 @@ def test_the_next_sighting_is_named_with_its_dials(client: TestClient, sample: A
     mounted = Rotation.align_vectors([stage["sight"]], vectors_of(client, sample, ["(1 0 0)"]))[0].as_matrix()
     answer = take(client, sample, sightings=sight(client, sample, stage, mounted, ["(1 0 0)", "(1 1 0)"]))
     assert re.search(r"Sight n\([^)]+\) next: it decides the hand\. It will be at turn [+−]", words(answer["mounting"]))
+
+
+def test_a_compensated_cut_keeps_its_value_over_temperature(client: TestClient, sample: Any) -> None:
+    # A second, invented state of the same property at 395 K; the change between them is zero on a cone.
+    document = sample["document"]
+    key = document["properties"][0]["id"]
+    hot = {**document["properties"][0], "id": "hot", "conditions": {"temperature": 395}}
+    free = document["properties"][0]["tensor"]["free"]
+    hot["tensor"] = {"free": {"11": free["11"] + 1.0, "13": free["13"], "22": free["22"] - 2.0, "33": free["33"] + 0.5}}
+    store: Store = client.app.state.store  # type: ignore[attr-defined]
+    kept = store.samples.get(sample["id"])
+    properties = [*(entry.plain() for entry in kept.document.properties), hot]
+    store.samples.save(sample["id"], change_document(kept.document, {"properties": properties}), kept.revision)
+    page = client.get(f"/samples/{sample['id']}/cut")
+    assert "change of Thermal conductivity per kelvin, 295 to 395 K" in page.text
+    answer = client.post(
+        f"/api/samples/{sample['id']}/cut/seek",
+        json={
+            "conditions": [
+                {"property": f"rate:{key}:hot", "target": 0},
+                {"property": key, "target": "max"},
+            ]
+        },
+    )
+    assert answer.status_code == 200, answer.text
+    found = re.search(r'data-cut-vector="\[([^\]]+)\]', answer.json()["result"])
+    assert found is not None
+    vector = np.array([float(part) for part in found[1].split(",")])
+    change = np.array([[1.0, 0, 0], [0, -2.0, 0], [0, 0, 0.5]])
+    assert vector @ change @ vector == pytest.approx(0.0, abs=1e-9)
+
+
+def test_cuts_that_no_other_beats_are_marked(client: TestClient, sample: Any) -> None:
+    made = take(client, sample, make=True)
+    rows = re.findall(r'<tr( class="unbeaten")?><th scope="row">(.*?)</th>', made["result"])
+    marked = {words(name).replace("◆", "").strip() for chosen, name in rows if chosen}
+    # Of one property, wished large, the best cut is the principal axis of the largest value, which b is.
+    assert "p 1" in marked
+    assert "[010]" in marked
+    key = sample["document"]["properties"][0]["id"]
+    small = take(client, made["sample"], wishes={key: "smallest"})
+    rows = re.findall(r'<tr( class="unbeaten")?><th scope="row">(.*?)</th>', small["result"])
+    assert {words(name).replace("◆", "").strip() for chosen, name in rows if chosen} == {"p 3"}
+
+
+def test_a_finished_part_calibrates_the_saw(client: TestClient, sample: Any) -> None:
+    stage = client.get("/api/stages").json()[0]
+    mounted = Rotation.align_vectors([stage["sight"]], vectors_of(client, sample, ["(0 0 1)"]))[0].as_matrix()
+    now = take(client, sample, make=True)["sample"]
+    now = take(client, now, sightings=sight(client, sample, stage, mounted, ["(0 0 1)", "(0 1 1)"]))["sample"]
+    for direction, toward in (("(0 0 1)", "[0 1 0]"), ("(0 1 1)", "[1 0 0]")):
+        change = {
+            "target": {"by": "direction", "direction": direction},
+            "achieved": {"tilt": 0.5, "toward": toward},
+            "edge": "[1 0 0]",
+        }
+        now = take(client, now, change=change)["sample"]
+        answer = take(client, now, calibrate=True)
+    kept = client.get("/api/stages").json()[0]["transfer"]
+    assert len(kept) == 2
+    for cut in kept:
+        off = np.rad2deg(np.arccos(np.array(cut["wanted"]) @ np.array(cut["achieved"])))
+        assert off == pytest.approx(0.5, abs=1e-6)
+    assert answer["stage"]["id"] == stage["id"]
+
+
+def test_a_wedge_is_told_apart_from_the_tilt(client: TestClient, sample: Any) -> None:
+    made = take(client, sample, make=True)["sample"]
+    text = words(take(client, made, change={"wedge": 0.1})["result"])
+    # Across 5 mm a wedge of 0.1° makes 5 mm × tan 0.1° = 8.73 µm.
+    assert "8.73 µm" in text
+    assert "second face" in text
