@@ -97,5 +97,9 @@ export const postConsequences = (id, asked) => ask("POST", `${at(id)}/consequenc
 export const askFrame = (id, asked) => ask("POST", `${at(id)}/frame-question`, asked);
 /** @param {string} id @param {object} asked */
 export const indexSpots = (id, asked) => ask("POST", `${at(id)}/cut/spots`, asked);
+/** @param {string} id */
+export const lookCloser = (id) => ask("POST", `${at(id)}/readings/closer`);
+/** @param {string} id @param {object} asked */
+export const nextCuts = (id, asked) => ask("POST", `${at(id)}/readings/next-cuts`, asked);
 /** A calculation call. @param {string} name @param {object} body */
 export const call = (name, body) => ask("POST", `/api/v1/${name}`, body);

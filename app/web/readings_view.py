@@ -23,6 +23,7 @@ from app.readings.report import (
 from app.readings.table import write_table
 from app.store.document import KeptProperty, KeptReading, current_property, readings_of
 from app.store.revisions import Kept
+from app.tensor.form import build_form
 from app.tensor.lock import explain_cells
 from app.tensor.printing import print_value
 from app.web.kept import crystal_for, crystal_of, entry_of, kind_of, pose_of, print_own_unit
@@ -83,6 +84,8 @@ def describe_kept(kept: Kept) -> dict[str, Any]:
         "result": None,
         "residuals": [],
         "stereogram": "",
+        "labels": [],
+        "usual_sigma": None,
         "problem": None,
     }
     try:
@@ -90,6 +93,9 @@ def describe_kept(kept: Kept) -> dict[str, Any]:
         content["unit"] = print_own_unit(shown.unit)
         entries = readings_of(kept.document, shown.id)
         content["grid"] = _lay_out(crystal, entries)
+        content["labels"] = list(build_form(crystal, kind_of(shown)).labels)
+        sigmas = [entry.sigma for entry in entries if entry.sigma is not None]
+        content["usual_sigma"] = f"{float(np.median(sigmas)):.3g}" if sigmas else None
         if any(entry.set_aside is None for entry in entries):
             fit, readings = fit_kept(crystal, kept, shown)
             content |= _describe_fit(crystal, fit, readings)

@@ -11,14 +11,17 @@ from app.store import open_store
 from app.version import VERSION
 from app.web import (
     calculation,
+    campaign_calls,
     consequences_page,
     cut_page,
     error_answers,
     frame_question,
     live,
+    next_cuts,
     optics_calls,
     pages,
     part_sheet,
+    readings_closer,
     readings_page,
     readings_table,
     samples,
@@ -30,6 +33,7 @@ from app.web import (
     stage_calls,
     stages,
     static_files,
+    tensor_copies,
     tensor_page,
 )
 from app.web.answers import JsonAnswer
@@ -76,6 +80,9 @@ def create_app(data_dir: Path | None = None) -> FastAPI:
     app.include_router(tensor_page.router)
     app.include_router(live.router)
     app.include_router(readings_page.router)
+    app.include_router(tensor_copies.router)
+    app.include_router(next_cuts.router)
+    app.include_router(readings_closer.router)
     app.include_router(readings_table.router)
     app.include_router(frame_question.router)
     app.include_router(part_sheet.router)
@@ -92,6 +99,7 @@ def create_app(data_dir: Path | None = None) -> FastAPI:
     app.include_router(series_calls.router)
     app.include_router(optics_calls.router)
     app.include_router(seek_calls.router)
+    app.include_router(campaign_calls.router)
     app.include_router(static_files.router)
     app.mount("/static", static_files.RevalidatedFiles(directory=static_folder()), name="static")
     return app
