@@ -101,5 +101,7 @@ export const indexSpots = (id, asked) => ask("POST", `${at(id)}/cut/spots`, aske
 export const lookCloser = (id) => ask("POST", `${at(id)}/readings/closer`);
 /** @param {string} id @param {object} asked */
 export const nextCuts = (id, asked) => ask("POST", `${at(id)}/readings/next-cuts`, asked);
+/** A question about the readings: isolate, cube, true-normal, piece or twin. @param {string} id @param {string} question @param {any} asked */
+export const askReadings = (id, question, asked) => ask("POST", `${at(id)}/readings/${question}`, asked);
 /** A calculation call. @param {string} name @param {object} body */
 export const call = (name, body) => ask("POST", `/api/v1/${name}`, body);

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import Annotated, Any, Literal
+from typing import Annotated, Any, Final, Literal
 
 import numpy as np
 from fastapi import APIRouter, Request
@@ -11,12 +11,16 @@ from pydantic import Field
 from app.crystal.crystal import Crystal
 from app.crystal.direction import Direction, typeset_indices
 from app.crystal.lattice import find_nearest
-from app.readings.campaign import build_plan, plan_campaign
-from app.readings.candidates import list_candidates, spread_candidates
-from app.readings.prospect import count_needed, list_losses
+from app.errors import InputError, located
+from app.readings.campaign import Plan, build_plan, plan_campaign
+from app.readings.candidates import Candidates, list_candidates, resolve_candidates, spread_candidates
+from app.readings.criterion import Criterion
+from app.readings.prospect import count_needed, list_losses, rank_candidates
 from app.readings.report import describe_direction
 from app.readings.sphere import GRID_POINTS
+from app.readings.table_cells import read_direction_cell
 from app.store.document import KeptProperty
+from app.tensor.pose import Pose
 from app.tensor.sentence import print_angle
 from app.web import responses
 from app.web.answers import JsonAnswer
@@ -32,13 +36,18 @@ from app.web.stereogram_view import list_directions, list_poles
 router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.ERROR_RESPONSES)
 
 
+RANKED: Final = 8
+"""So many candidates are listed with what each alone would bring."""
+
+
 class NextCutsRequest(Part):
     """How many bars may be cut, and what is wanted of them."""
 
     add: int = Field(3, ge=1, le=24)
     max_index: int | None = Field(2, ge=1, le=6, description="of planes and rows; null for any direction")
-    criterion: Literal["D", "A"] | Annotated[str, Field(pattern=r"^[1-3][1-3]$")] = Field(
-        "D", description="all cells together, the sum of variances, or one cell by its label"
+    listed: str | None = Field(None, max_length=4000, description="directions with commas between, instead")
+    criterion: Literal["D", "A"] | Annotated[str, Field(pattern=r"^([1-3][1-3]|p[1-3])$")] = Field(
+        "D", description="all cells together, the sum of variances, one cell by its label, one axis as p1"
     )
     sigma: Number = Field(gt=0, description="of a further reading")
     direction_sigma: Annotated[float, Field(ge=0, le=30)] = Field(0.0, description="of a further bar, degrees")
@@ -53,9 +62,7 @@ def next_cuts(sample_id: str, given: NextCutsRequest, request: Request) -> JsonA
     matrix = None if fit.estimate is None else fit.estimate.matrix
     if matrix is None:
         matrix = _take_kept(crystal, shown)
-    candidates = (
-        spread_candidates(GRID_POINTS) if given.max_index is None else list_candidates(crystal, given.max_index)
-    )
+    candidates = _take_candidates(crystal, given, pose_of(crystal, kept.document.pose))
     plan = build_plan(
         crystal,
         kind_of(shown),
@@ -67,12 +74,11 @@ def next_cuts(sample_id: str, given: NextCutsRequest, request: Request) -> JsonA
         batches=dict(kept.document.batches),
         pose=pose_of(crystal, kept.document.pose),
     )
-    single = given.criterion not in ("D", "A")
-    criterion = plan.read_criterion({"cell": given.criterion} if single else given.criterion)
+    criterion = plan.read_criterion(_spell_criterion(given.criterion))
     found = plan_campaign(plan, criterion, given.add)
     names = [_name(crystal, direction, vector) for direction, vector in zip(found.chosen, found.vectors, strict=True)]
     goal = None
-    if given.goal is not None and single:
+    if given.goal is not None and criterion.kind == "cell":
         goal = count_needed(plan, given.criterion, given.goal).sentence
     losses = [
         {
@@ -92,6 +98,7 @@ def next_cuts(sample_id: str, given: NextCutsRequest, request: Request) -> JsonA
         "notes": list(found.notes),
         "losses": losses,
         "goal": goal,
+        "ranking": _rank(crystal, plan, criterion),
         "unit": print_own_unit(shown.unit),
         "stereogram": draw_stereogram(
             crystal, Picture([*marks, *list_poles(crystal)]), title="Stereogram with the proposed cuts"
@@ -99,6 +106,39 @@ def next_cuts(sample_id: str, given: NextCutsRequest, request: Request) -> JsonA
     }
     result = templates.get_template("next_cuts.html").render(content)
     return JsonAnswer({"chosen": names, "vectors": found.vectors.tolist(), "result": result})
+
+
+def _spell_criterion(given: str) -> str | dict[str, Any]:
+    if given in ("D", "A"):
+        return given
+    return {"axis": int(given[1])} if given[0] == "p" else {"cell": given}
+
+
+def _take_candidates(crystal: Crystal, given: NextCutsRequest, pose: Pose) -> Candidates:
+    if given.listed is not None:
+        with located("listed"):
+            cells = [cell.strip() for cell in given.listed.split(",") if cell.strip()]
+            if not cells:
+                raise InputError("No direction is listed.", hint="Write them with commas between: (1 0 0), [0 1 1].")
+            return resolve_candidates(crystal, [read_direction_cell(cell) for cell in cells], pose)
+    if given.max_index is None:
+        return spread_candidates(GRID_POINTS)
+    return list_candidates(crystal, given.max_index)
+
+
+def _rank(crystal: Crystal, plan: Plan, criterion: Criterion) -> list[dict[str, str]]:
+    """The best single candidates; none of a whole sphere, which cannot be listed."""
+    if plan.candidates.continuous:
+        return []
+    found = rank_candidates(plan, criterion, RANKED)
+    return [
+        {
+            "name": _name(crystal, plan.candidates.directions[entry.position], plan.candidates.vectors[entry.position]),
+            "gain": f"{entry.gain:.2f}",
+            "sigma": "–" if np.isnan(entry.after.sigma_matrix).all() else f"{np.nanmax(entry.after.sigma_matrix):.2g}",
+        }
+        for entry in found
+    ]
 
 
 def _take_kept(crystal: Crystal, shown: KeptProperty) -> Any:

@@ -10,6 +10,7 @@ import numpy as np
 import numpy.typing as npt
 
 from app.crystal.crystal import Crystal
+from app.readings.rocking import judge_piece
 from app.tensor.estimate import Estimate
 from app.tensor.pose import Pose
 from app.tensor.printing import print_value
@@ -29,11 +30,6 @@ SHAPES: Final = {
 KERF: Final = 0.3
 STOCK: Final = 0.05
 """Millimetres lost to a diamond blade, and left on each face for polishing; common practice, no source."""
-
-ROD_RATIO: Final = 5.0
-PLATE_RATIO: Final = 10.0
-"""From about so many times as long as wide a bar reads as a rod, and as wide as thick a plate as a plate; common
-practice, no source."""
 
 
 @dataclass(frozen=True)
@@ -83,17 +79,9 @@ def measure_raw(size: tuple[float, float, float], kerf: float, stock: float) -> 
 
 
 def judge_shape(size: tuple[float, float, float]) -> str:
-    """Whether a part of this size reads as a rod along z, as a plate across z, or as neither; a sentence."""
-    wide, long = max(size[0], size[1]), size[2]
-    narrow = min(size[0], size[1])
-    if long >= ROD_RATIO * wide:
-        return f"It is {long / wide:.3g} times as long as wide, so it reads as a rod along z."
-    if narrow >= PLATE_RATIO * long:
-        return f"It is {narrow / long:.3g} times as wide as thick, so it reads as a plate across z."
-    return (
-        f"It is neither long (from {ROD_RATIO:g} times as long as wide) nor thin (from {PLATE_RATIO:g} times as wide "
-        "as thick), so a reading along z lies between the two."
-    )
+    """Whether a part of this size reads as a rod along its length, as a plate across its thickness, or as neither."""
+    wide, narrow, long = max(size[0], size[1]), min(size[0], size[1]), size[2]
+    return judge_piece(long, wide, narrow)[1] if long >= wide else judge_piece(wide, narrow, long)[1]
 
 
 def describe_part(

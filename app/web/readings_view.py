@@ -30,6 +30,7 @@ from app.web.kept import crystal_for, crystal_of, entry_of, kind_of, pose_of, pr
 from app.web.kept_readings import take_all, take_readings
 from app.web.posed import render_number
 from app.web.readings_picture import draw_readings
+from app.web.residual_plots import plot_residuals
 
 GRID_COLUMNS: Final = (
     ("kind", "kind"),
@@ -83,6 +84,7 @@ def describe_kept(kept: Kept) -> dict[str, Any]:
         "batches": {name: f"{sigma:g}" for name, sigma in kept.document.batches.items()},
         "result": None,
         "residuals": [],
+        "plots": [],
         "stereogram": "",
         "labels": [],
         "usual_sigma": None,
@@ -99,6 +101,7 @@ def describe_kept(kept: Kept) -> dict[str, Any]:
         if any(entry.set_aside is None for entry in entries):
             fit, readings = fit_kept(crystal, kept, shown)
             content |= _describe_fit(crystal, fit, readings)
+            content["plots"] = plot_residuals(crystal, fit, readings, pose_of(crystal, kept.document.pose))
             content["stereogram"] = draw_readings(crystal, fit, readings, pose_of(crystal, kept.document.pose))
         else:
             content["headline"] = "All readings are set aside." if entries else "No readings yet."

@@ -10,6 +10,7 @@ from starlette.middleware import Middleware
 from app.store import open_store
 from app.version import VERSION
 from app.web import (
+    bar_questions,
     calculation,
     campaign_calls,
     consequences_page,
@@ -35,6 +36,7 @@ from app.web import (
     static_files,
     tensor_copies,
     tensor_page,
+    twin_question,
 )
 from app.web.answers import JsonAnswer
 from app.web.resources import static_folder
@@ -100,6 +102,8 @@ def create_app(data_dir: Path | None = None) -> FastAPI:
     app.include_router(optics_calls.router)
     app.include_router(seek_calls.router)
     app.include_router(campaign_calls.router)
+    app.include_router(bar_questions.router)
+    app.include_router(twin_question.router)
     app.include_router(static_files.router)
     app.mount("/static", static_files.RevalidatedFiles(directory=static_folder()), name="static")
     return app

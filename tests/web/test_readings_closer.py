@@ -131,3 +131,86 @@ def test_readings_that_cannot_answer_have_no_copies(client: TestClient, sample: 
     closer = client.post(f"/api/samples/{sample['id']}/readings/closer")
     assert closer.status_code == 200
     assert "cannot tell" in words(closer.json()["result"])
+
+
+def ask(client: TestClient, sample: Any, question: str, body: Any) -> Any:
+    return client.post(f"/api/samples/{sample['id']}/readings/{question}", json=body)
+
+
+def test_one_cell_is_given_by_hand(client: TestClient, sample: Any) -> None:
+    answer = ask(client, sample, "isolate", {"cell": "13", "max_index": 2, "sigma": 0.1})
+    assert answer.status_code == 200, answer.text
+    found = answer.json()
+    # Readings of a tensor that nobody fitted, by the sum that is printed, give its cell.
+    crystal = sample["document"]["crystal"]
+    matrix = [[13.0, 0, 2.5], [0, 24.0, 0], [2.5, 0, 16.0]]
+    read = client.post(
+        "/api/v1/along", json={"crystal": crystal, "tensor": {"matrix": matrix}, "directions": found["directions"]}
+    ).json()["values"]
+    assert np.dot(found["weights"], read) == pytest.approx(2.5)
+    assert float(found["sigma"]) == pytest.approx(0.1 * np.linalg.norm(found["weights"]), rel=0.05)
+    assert found["sentence"].startswith("13 = ")
+    assert ask(client, sample, "isolate", {"cell": "12"}).status_code == 422
+
+
+def test_a_cube_is_named_by_its_faces(client: TestClient, sample: Any) -> None:
+    answer = ask(client, sample, "cube", {"max_index": 1})
+    assert answer.status_code == 200, answer.text
+    best = answer.json()["cubes"][0]
+    assert best["rank"] == 4
+    assert best["between_faces"] <= 3
+    # The 13 directions of a cube of any lie see all four cells of a monoclinic tensor with a condition of 1 or more.
+    assert 1 <= float(best["condition"]) < 3
+
+
+def test_a_true_normal_can_be_typed_into_the_table(client: TestClient, sample: Any) -> None:
+    azimuths = [0, 60, 120, 180, 240, 300]
+    angles = (14.2 + 0.8 * np.cos(np.deg2rad(np.array(azimuths) - 90))).tolist()
+    answer = ask(
+        client,
+        sample,
+        "true-normal",
+        {"nominal": "(0 1 0)", "toward": "[0 0 1]", "azimuths": azimuths, "angles": angles, "sigma": 0.01},
+    )
+    assert answer.status_code == 200, answer.text
+    found = answer.json()
+    word, *numbers = found["direction"].split()
+    assert word == "xyz"
+    # y is the normal and z azimuth 0, so azimuth 90 degrees, right-handed about y, is x.
+    wanted = [np.sin(np.deg2rad(0.8)), np.cos(np.deg2rad(0.8)), 0]
+    assert np.array(numbers, dtype=float) == pytest.approx(wanted, abs=1e-9)
+    assert float(found["direction_sigma"]) == pytest.approx(0.01 / np.sqrt(3), rel=0.05)
+    few = {"nominal": "(0 1 0)", "toward": "[0 1 0]", "azimuths": [0, 90], "angles": [1, 2]}
+    assert ask(client, sample, "true-normal", few).status_code == 422
+    flat = {"nominal": "(0 1 0)", "toward": "[0 1 0]", "azimuths": azimuths, "angles": angles}
+    assert ask(client, sample, "true-normal", flat).json()["error"]["field"] == "toward"
+
+
+def test_rod_or_plate_is_said(client: TestClient, sample: Any) -> None:
+    for size, kind in (((20, 3, 2), "rod"), ((20, 22, 1), "plate"), ((5, 4, 3), "between")):
+        body = dict(zip(("length", "width", "thickness"), size, strict=True))
+        assert ask(client, sample, "piece", body).json()["kind"] == kind
+
+
+def test_a_twin_fraction_is_fitted_or_refused(client: TestClient, sample: Any) -> None:
+    refused = ask(client, sample, "twin", {"about": "[1 0 0]"})
+    assert refused.status_code == 200, refused.text
+    assert refused.json()["fraction"] is None
+    assert "neither is told" in refused.json()["result"]
+    turned = ask(client, sample, "twin", {"about": "(1 1 0)"})
+    assert turned.status_code == 200, turned.text
+    assert 0 <= turned.json()["fraction"] < 0.2
+    assert ask(client, sample, "twin", {"about": "[0 1 0]"}).status_code == 422
+
+
+def test_next_cuts_keep_to_what_the_boule_allows_and_serve_one_axis(client: TestClient, sample: Any) -> None:
+    listed = {"add": 2, "sigma": 0.12, "listed": "(1 1 0), [0 1 1], (0 2 1)"}
+    found = ask(client, sample, "next-cuts", listed)
+    assert found.status_code == 200, found.text
+    assert set(found.json()["chosen"]) <= {"n(110)", "[011]", "n(021)"}
+    assert "Each candidate alone" in found.json()["result"]
+    assert ask(client, sample, "next-cuts", {**listed, "listed": " , "}).json()["error"]["field"] == "listed"
+    axis = ask(client, sample, "next-cuts", {"add": 2, "sigma": 0.12, "criterion": "p2"})
+    assert axis.status_code == 200, axis.text
+    held = ask(client, sample, "next-cuts", {"add": 2, "sigma": 0.12, "criterion": "p1"})
+    assert "Symmetry holds" in held.json()["error"]["message"]
