@@ -163,11 +163,11 @@ def _relax(columns: FloatArray, wanted: FloatArray) -> tuple[list[int], FloatArr
 
 
 def _write_sum(directions: tuple[Direction, ...], weights: FloatArray) -> str:
-    """ "½ y[101] − ½ y[10−1]": simple fractions as such, other weights with four digits."""
+    """ "1/2 y [101] − 1/2 y [10−1]": simple fractions as such, other weights with four digits."""
     parts = []
     for direction, weight in zip(directions, weights, strict=True):
         sign = "−" if weight < 0 else "+"
-        parts.append(f"{sign} {_write_factor(abs(float(weight)))}y{_name(direction)}")
+        parts.append(f"{sign} {_write_factor(abs(float(weight)))}y {_name(direction)}")
     text = " ".join(parts)
     return text[2:] if text.startswith("+ ") else "−" + text[2:]
 

@@ -140,7 +140,9 @@ def true_normal(sample_id: str, given: TrueNormalRequest, request: Request) -> J
             achieved = find_achieved_direction(vectors[0], vectors[1], found.tilt, found.azimuth)
         except InputError as error:
             raise InputError(error.message, field="toward", hint="Name a direction that lies in the face.") from None
-    direction = Direction("vector", (float(achieved[0]), float(achieved[1]), float(achieved[2])))
+    # Six decimals are 0.00006 degrees, far below what rocking angles tell.
+    x, y, z = (round(float(part), 6) + 0.0 for part in achieved)
+    direction = Direction("vector", (x, y, z))
     spread = None
     if found.covariance is not None:
         # One number for the table: the mean of the two components' variances.

@@ -164,3 +164,39 @@ def test_it_fits_and_has_no_accessibility_violation(page: Page, served: Served, 
     open_readings(page, served)
     assert page.evaluate("document.documentElement.scrollWidth - window.innerWidth") <= 1
     assert [violation["id"] for violation in Axe().run(page).response["violations"]] == []
+
+
+def test_a_pasted_table_leads_to_the_next_cut(page: Page, served: Served) -> None:
+    sample = open_readings(page, served)
+    page.locator("#as-text > summary").click()
+    page.get_by_label("Type, paste or drop a table").fill(
+        "kind,direction,value,sigma\nalong,(1 0 0),13.2,0.1\nrod,[0 1 0],24.6,0.2\nrod,[0 0 1],15.7,0.1\n"
+    )
+    page.get_by_role("button", name="Take this table").click()
+    expect(page.get_by_role("heading", level=1)).to_contain_text("3 readings do not determine the tensor")
+    page.locator("#next-cuts > summary").click()
+    form = page.locator("#next-form")
+    form.get_by_label("How many bars").fill("none")
+    form.get_by_role("button", name="Propose").click()
+    expect(form.locator("[data-fault]:visible, [aria-invalid]")).not_to_have_count(0)
+    form.get_by_label("How many bars").fill("1")
+    form.get_by_label("σ of a reading").fill("0.1")
+    form.get_by_role("button", name="Propose").click()
+    answer = page.locator("#next-result")
+    expect(answer).to_contain_text("the condition is then")
+    expect(answer.locator("svg")).to_be_visible()
+    # The proposed cut, taken as a reading, does settle the tensor, as it was said to.
+    cut = str(answer.locator(".sought").inner_text()).removeprefix("Cut ").split(";")[0]
+    name = cut.removeprefix("n") if cut.startswith("n(") else cut
+    typed = re.sub(r"−(\d)|(\d)", lambda found: f" {found.group(0).replace('−', '-')}", name)
+    typed = typed.replace("( ", "(").replace("[ ", "[")
+    page.get_by_role("button", name="Add a row").click()
+    cells = {"kind": "along" if cut.startswith("n") else "rod", "direction": typed, "value": "15.0", "sigma": "0.1"}
+    for column, text in cells.items():
+        page.locator(
+            f"#grid tbody tr:nth-child(4) [data-column={column}] input, "
+            f"#grid tbody tr:nth-child(4) input[data-column={column}]"
+        ).first.fill(text)
+    cell(page, 1, "value").focus()
+    expect(page.get_by_role("heading", level=1)).to_contain_text("4 readings give 4 cells")
+    assert len(kept_readings(served, sample)) == 4

@@ -48,7 +48,7 @@ def test_the_shear_of_two_diagonals() -> None:
     found = isolate_cell(ORTHO_AXES, SYMMETRIC, "13", candidates)
     assert found.weights == pytest.approx([0.5, -0.5])
     assert found.fewest
-    assert found.sentence == "13 = 1/2 y(1, 0, 1) − 1/2 y(1, 0, -1)"
+    assert found.sentence == "13 = 1/2 y (1, 0, 1) − 1/2 y (1, 0, -1)"
 
 
 def test_no_smaller_set_does() -> None:
