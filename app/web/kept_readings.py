@@ -8,11 +8,13 @@ from typing import Any
 from app.crystal.crystal import Crystal
 from app.crystal.direction import Direction, read_direction
 from app.errors import located
+from app.readings.fit import Fit, fit_readings
 from app.readings.reading import Reading
 from app.readings.table import ReadingTable, write_table
 from app.store.canonical import plain
-from app.store.document import KeptReading
+from app.store.document import KeptProperty, KeptReading, SampleDocument, readings_of
 from app.tensor.pose import read_pose
+from app.web.kept import kind_of, pose_of, print_own_unit
 from app.web.rendering import render_direction
 
 
@@ -28,6 +30,20 @@ def take_readings(crystal: Crystal, kept: Sequence[KeptReading]) -> list[Reading
 def take_all(crystal: Crystal, kept: Sequence[KeptReading]) -> list[Reading]:
     """All the readings, those set aside included. Raises InputError as ``take_readings`` does."""
     return [_take_reading(crystal, entry, f"readings[{index}]") for index, entry in enumerate(kept)]
+
+
+def fit_document(crystal: Crystal, document: SampleDocument, shown: KeptProperty) -> tuple[Fit, list[Reading]]:
+    """The fit of a property's readings that are in use, and these. Raises InputError as ``fit_readings`` does."""
+    readings = take_readings(crystal, readings_of(document, shown.id))
+    fit = fit_readings(
+        crystal,
+        kind_of(shown),
+        readings,
+        batches=dict(document.batches),
+        pose=pose_of(crystal, document.pose),
+        unit=print_own_unit(shown.unit),
+    )
+    return fit, readings
 
 
 def _take_reading(crystal: Crystal, kept: KeptReading, field: str) -> Reading:

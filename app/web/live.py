@@ -28,6 +28,7 @@ from app.web.kept import crystal_for, crystal_of, entry_of, print_own_unit, tens
 from app.web.parts import Number, Part, Pose, Text, ThreeByThree
 from app.web.posed import describe_pose, describe_subject
 from app.web.scene import Subject, pack_scene
+from app.web.settling import find_settling, fingerprint_readings
 from app.web.turning import (
     Caught,
     Hold,
@@ -127,7 +128,15 @@ class Subjects:
             raise InputError("The sample has no property yet.", field="property", hint="Choose one.")
         entry = entry_of(kept)
         content = json.dumps(
-            [document.crystal.plain(), kept.tensor.plain(), kept.unit, kept.kind, list(document.part)], sort_keys=True
+            [
+                document.crystal.plain(),
+                kept.tensor.plain(),
+                kept.unit,
+                kept.kind,
+                list(document.part),
+                fingerprint_readings(document, kept),
+            ],
+            sort_keys=True,
         )
         key = hashlib.sha256(content.encode()).hexdigest()[:24]
         known = self.find(key)
@@ -142,7 +151,14 @@ class Subjects:
             other = "plate"
         unit = print_own_unit(kept.unit)
         subject = Subject(
-            key, crystal, tensor, find_principal(tensor.estimate), "" if unit == "1" else unit, other, document.part
+            key,
+            crystal,
+            tensor,
+            find_principal(tensor.estimate),
+            "" if unit == "1" else unit,
+            other,
+            document.part,
+            find_settling(crystal, document, kept),
         )
         self._kept[key] = subject
         while len(self._kept) > MOST_SUBJECTS:

@@ -58,6 +58,7 @@ def draw_overlay(
     _draw_numbers(scene, screen, texts)
     _draw_crystal(subject, scene, screen, marks, texts)
     _draw_principal(subject, scene, screen, marks, texts)
+    _draw_settling(subject, scene, screen, marks)
     return {"shapes": block_back + marks + block_front, "texts": texts}
 
 
@@ -211,6 +212,17 @@ def _draw_principal(subject: Subject, scene: Scene, screen: FloatArray, marks: l
                 said = True
                 x, y = to_drawing(drawn[-1])
                 texts.append(_text("remark", float(x) + 12, float(y) + 5, [["long is small", "plain"]], "start"))
+
+
+def _draw_settling(subject: Subject, scene: Scene, screen: FloatArray, marks: list[Shape]) -> None:
+    """Targets where a further reading would see what the readings in use do not."""
+    for direction in subject.settling.directions:
+        radius = float(scene.radius(direction))
+        for sense in (1.0, -1.0):
+            point = direction * sense * (radius if np.isfinite(radius) else scene.reach)
+            if not _hidden(scene, screen, (point * 1.015)[None])[0]:
+                drawn = point @ screen.T
+                marks.append(shape("front", "target", write_ring(drawn, 11.0) + write_ring(drawn, 4.0)))
 
 
 def _label(texts: list[Shape], name: str, point: FloatArray, runs: list[list[str]], away: float) -> None:

@@ -88,6 +88,7 @@ def describe_subject(subject: Subject) -> dict[str, Any]:
         "mirrors": [_name_mirror(subject, normal) for normal in subject.mirrors],
         "negative": bool(np.any(values < 0)),
         "has_region": bool(subject.regions),
+        "settling": subject.settling.sentence,
         "other": {"rod": "long bar", "plate": "wide plate", None: None}[subject.other],
         "step": _print_step(subject),
     }

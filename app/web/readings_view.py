@@ -12,7 +12,7 @@ import numpy as np
 
 from app.crystal.crystal import Crystal
 from app.errors import HalfturnError, InputError
-from app.readings.fit import Fit, fit_readings
+from app.readings.fit import Fit
 from app.readings.reading import Reading
 from app.readings.report import (
     describe_combination,
@@ -27,7 +27,7 @@ from app.tensor.form import build_form
 from app.tensor.lock import explain_cells
 from app.tensor.printing import print_value
 from app.web.kept import crystal_for, crystal_of, entry_of, kind_of, pose_of, print_own_unit
-from app.web.kept_readings import take_all, take_readings
+from app.web.kept_readings import fit_document, take_all
 from app.web.posed import render_number
 from app.web.readings_picture import draw_readings
 from app.web.residual_plots import plot_residuals
@@ -61,16 +61,7 @@ def require_property(kept: Kept) -> tuple[Crystal, KeptProperty]:
 
 def fit_kept(crystal: Crystal, kept: Kept, shown: KeptProperty) -> tuple[Fit, list[Reading]]:
     """The fit of the readings that are in use, and these."""
-    readings = take_readings(crystal, readings_of(kept.document, shown.id))
-    fit = fit_readings(
-        crystal,
-        kind_of(shown),
-        readings,
-        batches=dict(kept.document.batches),
-        pose=pose_of(crystal, kept.document.pose),
-        unit=print_own_unit(shown.unit),
-    )
-    return fit, readings
+    return fit_document(crystal, kept.document, shown)
 
 
 def describe_kept(kept: Kept) -> dict[str, Any]:

@@ -23,6 +23,7 @@ from app.tensor.region import find_region
 from app.tensor.surface import Surface, SurfaceKind, build_surface
 from app.tensor.surface_lines import Levels, SurfaceLine, choose_levels, value_lines
 from app.tensor.tensor import PropertyTensor
+from app.web.settling import NOTHING, Settling
 
 FloatArray = npt.NDArray[np.float64]
 
@@ -46,6 +47,7 @@ class Subject:
         unit: printed.
         other: what else the value could be read as, see ``app.tensor.sentence.write_sentence``.
         part: the block in mm along x, y, z.
+        settling: what would settle the tensor where the readings in use do not tell it.
     """
 
     key: str
@@ -55,6 +57,7 @@ class Subject:
     unit: str
     other: Literal["rod", "plate", None]
     part: tuple[float, float, float]
+    settling: Settling = NOTHING
 
     @cached_property
     def half(self) -> FloatArray:

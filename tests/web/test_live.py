@@ -7,6 +7,7 @@ import pytest
 
 from app.errors import InputError
 from app.store.demonstration import demonstration_documents
+from app.store.document import change_document
 from app.web.live import Subjects, TurnMessage, answer_turn, read_message
 
 SUBJECT = Subjects().take(demonstration_documents()[0])
@@ -53,3 +54,21 @@ def test_the_catch_draws_z_to_a_low_normal() -> None:
 def test_an_unknown_message_is_refused() -> None:
     with pytest.raises(InputError):
         read_message('{"type": "dance"}')
+
+
+def test_what_would_settle_few_readings_is_lit_on_the_surface() -> None:
+    document = demonstration_documents()[0]
+    # Bars along b, c and the normal of (100) never see the cell 13.
+    few = change_document(document, {"readings": document.plain()["readings"][:5]})
+    subject = Subjects().take(few)
+    assert subject.settling.sentence is not None
+    assert "would settle it" in subject.settling.sentence
+    (direction,) = subject.settling.directions
+    # A reading sees 13 by 2 n1 n3.
+    assert abs(2 * direction[0] * direction[2]) > 0.1
+    turn = {"type": "turn", "hash": subject.key, "seq": 1, "pose": START}
+    answer = answer_turn(subject, TurnMessage.model_validate(turn))
+    assert any(shape["class"] == "target" for shape in answer["overlay"]["shapes"])  # type: ignore[index]
+    assert SUBJECT.settling.sentence is None
+    turned = change_document(document, {"pose": {"axis": "[0 1 0]", "angle": 20}})
+    assert Subjects().take(turned).key == SUBJECT.key
