@@ -25,7 +25,9 @@ function show(answer) {
     if (document.activeElement !== slider) slider.value = answer.at;
     get("at-text").textContent = get("series-answer").querySelector("h2")?.firstChild?.textContent?.replace("Expansion at ", "").trim() ?? "";
   }
-  if (!typed) get("series-table").value = answer.series.table || get("series-table").value;
+  if (!typed) get("series-table").value = answer.table;
+  const settings = { degree: answer.series.degree, strain: answer.series.strain, reference: answer.series.reference ?? "", faces: answer.series.faces.map((/** @type {string[]} */ pair) => pair.join("  ")).join("\n") };
+  for (const [name, value] of Object.entries(settings)) if (document.activeElement !== get(name)) get(name).value = value;
   revision = answer.sample?.revision ?? revision;
 }
 

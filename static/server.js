@@ -80,6 +80,12 @@ export const fetchSeries = (id, place) => ask("GET", `${at(id)}/series?at=${plac
 export const postSeries = (id, parent, change, place) => ask("POST", `${at(id)}/series`, { parent, change, at: place });
 /** @param {string} id @param {number} parent @param {string[]} texts */
 export const postCifs = (id, parent, texts) => ask("POST", `${at(id)}/series/cifs`, { parent, texts });
+/** @param {string} id @param {number} place */
+export const fetchTensorSeries = (id, place) => ask("GET", `${at(id)}/tensor-series?at=${place}`);
+/** @param {string} id @param {number} parent @param {object} change @param {number|null} place */
+export const postTensorSeries = (id, parent, change, place) => ask("POST", `${at(id)}/tensor-series`, { parent, change, at: place });
+/** @param {string} id @param {number} parent @param {number} place */
+export const useTensorSeries = (id, parent, place) => ask("POST", `${at(id)}/tensor-series/use`, { parent, at: place });
 /** @param {string} id @param {number} parent @param {number} place */
 export const useSeries = (id, parent, place) => ask("POST", `${at(id)}/series/use`, { parent, at: place });
 /** @param {string} id */

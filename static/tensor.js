@@ -1,5 +1,6 @@
 // The front page: joins the kept sample, the live channel, the scene, the overlay and the matrices.
 
+import { followWith, showFollowed } from "./follow.js";
 import { openLive } from "./live.js";
 import { explainPosed, makeEditable, showPose, showPoses, showProperty, showSubject, showSurfaceWords } from "./matrix.js";
 import { drawOverlay } from "./overlay.js";
@@ -19,19 +20,20 @@ function start({ subject, first }) {
   const startPose = state.pose;
   const scene = makeScene(byId("plot"), () => { byId("no-picture").hidden = false; });
   const paint = (/** @type {any} */ answer) => { last = answer; showPose(answer); drawOverlay(back, front, answer.overlay); scene.look(answer.camera); };
-  const paintSubject = (/** @type {any} */ given) => { subject = given; showSubject(given); showProperty(currentSample().derived.property, given.unit); showSurfaceWords(given, state.surface); };
+  const paintSubject = (/** @type {any} */ given) => { subject = given; showSubject(given); showProperty(currentSample().derived.property, given.unit); showSurfaceWords(given, state.surface); showFollowed(given.followed); };
   const live = openLive({
-    onOpen: () => live.send({ type: "tensor", sample: currentSample().id, revision: currentSample().revision }),
+    onOpen: () => askSubject(),
     onBinary: (data) => scene.show(unpack(data)),
     onMessage: (answer) => {
       if (answer.type === "subject") {
+        follow.answered();
         const same = answer.hash === state.hash;
         state = { ...state, hash: answer.hash, answered: same ? state.answered : 0 };
         paintSubject(answer);
         live.send({ type: "surface", hash: state.hash, surface: state.surface });
         request();
-      } else if (answer.type === "need") live.send({ type: "tensor", sample: currentSample().id, revision: currentSample().revision });
-      else if (answer.type === "error") { fault(`${answer.error.message} ${answer.error.hint ?? ""}`); waiting = null; }
+      } else if (answer.type === "need") askSubject();
+      else if (answer.type === "error") { follow.answered(); fault(`${answer.error.message} ${answer.error.hint ?? ""}`); waiting = null; }
       else if (answer.type === "state") {
         const before = state;
         state = turns.receive(state, answer);
@@ -41,6 +43,8 @@ function start({ subject, first }) {
       }
     },
   });
+  const askSubject = () => live.send({ type: "tensor", sample: currentSample().id, revision: currentSample().revision, at: follow.at() });
+  const follow = followWith(askSubject);
   const fault = (/** @type {string} */ text) => { byId("turn-fault").textContent = text; byId("turn-fault").hidden = !text; };
   function request(more = {}, keeps = false) {
     const asked = turns.ask(state, more);
@@ -58,10 +62,11 @@ function start({ subject, first }) {
     if (sample.revision === revision) return;
     revision = sample.revision;
     if (!state.press && !waiting) state = { ...state, pose: sample.document.pose };
-    live.send({ type: "tensor", sample: sample.id, revision: sample.revision });
+    askSubject();
   });
   explainPosed(() => last);
-  makeEditable((label, text) => edit({ free: { [label]: text } }), () => subject);
+  // A typed cell is one of the kept tensor, so the picture goes back to it.
+  makeEditable((label, text) => { follow.release(); return edit({ free: { [label]: text } }); }, () => subject);
 
   let from = [0, 0];
   const unit = () => figure.querySelector(".stage").getBoundingClientRect().height / 2 / 1.2;

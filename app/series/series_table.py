@@ -2,24 +2,16 @@
 
 from __future__ import annotations
 
-import csv
-import io
-import re
 from collections.abc import Sequence
-from dataclasses import dataclass, field
-from typing import Any, Final
+from dataclasses import dataclass
+from typing import Final
 
 from app.crystal.cell import PARAMETER_NAMES
 from app.crystal.cell_locks import SYMBOLS, CellLock
 from app.errors import InputError
 from app.series.cell_series import CellState
+from app.series.table_layout import VARIABLE_NAMES, Layout, TableProblems, check_length, find_variable, lay_out_table
 from app.tensor.printing import parse_value
-
-SIZE_LIMIT: Final = 4 * 1024 * 1024
-ROW_LIMIT: Final = 10_000
-LISTED_PROBLEMS: Final = 1000
-VARIABLE_NAMES: Final = ("t", "temperature", "pressure", "wavelength", "composition")
-SEPARATORS: Final = (";", "\t", ",")
 
 _EXAMPLE: Final = "t,a,b,c,alpha,beta,gamma"
 _SIGMA_NAMES: Final = {f"{name}_sigma": position for position, name in enumerate(PARAMETER_NAMES)}
@@ -44,29 +36,6 @@ class CellTable:
     line_numbers: tuple[int, ...]
 
 
-@dataclass
-class _Problems:
-    listed: list[dict[str, Any]] = field(default_factory=list)
-    count: int = 0
-
-    def add(self, line: int, column: str | None, reason: str) -> None:
-        self.count += 1
-        if len(self.listed) < LISTED_PROBLEMS:
-            self.listed.append({"line": line, "column": column, "reason": reason})
-
-    def refuse_if_any(self) -> None:
-        if not self.count:
-            return
-        first = self.listed[0]
-        where = f"line {first['line']}" + (f", {first['column']}" if first["column"] else "")
-        many = "one problem" if self.count == 1 else f"{self.count} problems, the first"
-        raise InputError(
-            f"The table has {many} in {where}: {first['reason']}",
-            hint="Nothing was taken; mend the rows and read the table again.",
-            detail={"problems": self.listed, "count": self.count},
-        )
-
-
 def read_cell_table(text: str, locks: Sequence[CellLock] | None = None) -> CellTable:
     """Read cells against a variable; all of them, or none.
 
@@ -87,53 +56,21 @@ def read_cell_table(text: str, locks: Sequence[CellLock] | None = None) -> CellT
         InputError: the text is no table; or rows are bad, with ``detail`` {"problems": [{line, column, reason}],
             "count"}, where the first 1000 are listed.
     """
-    if len(text) > SIZE_LIMIT:
-        raise InputError(f"The table is longer than {SIZE_LIMIT} characters.", hint="Split it.")
-    if "\x00" in text:
-        raise InputError("The table holds a character NUL, so it is no text.", hint="Save it as UTF-8.")
-    problems = _Problems()
-    lines = _list_lines(text.removeprefix("\ufeff"))
-    if not lines:
-        raise InputError("The table is empty.", hint=f"Its first line is for example {_EXAMPLE}.")
-    separator = next((mark for mark in SEPARATORS if mark in lines[0][1]), ",")
-    rows = [(number, _split(line, separator, number, problems)) for number, line in lines]
+    problems = TableProblems()
+    layout = lay_out_table(text, _EXAMPLE, problems)
+    variable = _check_header(layout, locks, problems)
     problems.refuse_if_any()
-    header_line, header = rows[0][0], [name.lower() for name in rows[0][1]]
-    while header and not header[-1]:
-        header.pop()
-    variable = _check_header(header, header_line, locks, problems)
-    problems.refuse_if_any()
-    if len(rows) == 1:
-        raise InputError("The table has a header and no cells.", hint="Add a row for each value of the variable.")
-    if len(rows) - 1 > ROW_LIMIT:
-        raise InputError(f"The table has more than {ROW_LIMIT} rows.", hint="Split it.")
-    decimal_comma = separator != "," and any("," in cell for _, cells in rows[1:] for cell in cells)
-    states = [_read_row(header, line, cells, locks, decimal_comma, problems) for line, cells in rows[1:]]
+    layout.require_rows()
+    states = [_read_row(layout, line, cells, locks, problems) for line, cells in layout.rows]
     problems.refuse_if_any()
     return CellTable(
-        tuple(state for state in states if state is not None), variable, tuple(line for line, _ in rows[1:])
+        tuple(state for state in states if state is not None), variable, tuple(line for line, _ in layout.rows)
     )
 
 
-def _list_lines(text: str) -> list[tuple[int, str]]:
-    every = enumerate(re.split(r"\r\n|\n|\r", text), start=1)
-    return [(number, line) for number, line in every if line.strip(" \t,;") and not line.lstrip().startswith("#")]
-
-
-def _split(line: str, separator: str, number: int, problems: _Problems) -> list[str]:
-    try:
-        cells = next(csv.reader(io.StringIO(line), delimiter=separator, strict=True, skipinitialspace=True))
-    except (csv.Error, StopIteration):
-        problems.add(number, None, "a quote is not closed, or stands within a cell.")
-        return []
-    return [cell.strip() for cell in cells]
-
-
-def _check_header(header: list[str], line: int, locks: Sequence[CellLock] | None, problems: _Problems) -> str:
-    variables = [name for name in header if name in VARIABLE_NAMES]
-    if len(variables) != 1:
-        found = "two columns name a variable" if variables else "no column names the variable"
-        problems.add(line, None, f"{found}; one of {', '.join(VARIABLE_NAMES)} is needed.")
+def _check_header(layout: Layout, locks: Sequence[CellLock] | None, problems: TableProblems) -> str:
+    header, line = layout.header, layout.header_line
+    variable = find_variable(layout, problems)
     seen: set[str | int] = set()
     for name in header:
         key = _POSITIONS.get(name, name)
@@ -148,32 +85,26 @@ def _check_header(header: list[str], line: int, locks: Sequence[CellLock] | None
             problems.add(line, name, f"the column {name} is missing.")
         if position not in seen and f"{name}_sigma" in seen:
             problems.add(line, f"{name}_sigma", f"there is no column {name} that it could belong to.")
-    return variables[0] if variables else ""
+    return variable
 
 
 def _read_row(
-    header: list[str],
-    line: int,
-    cells: list[str],
-    locks: Sequence[CellLock] | None,
-    decimal_comma: bool,
-    problems: _Problems,
+    layout: Layout, line: int, cells: list[str], locks: Sequence[CellLock] | None, problems: TableProblems
 ) -> CellState | None:
     before = problems.count
-    if len(cells) < len(header) or any(cells[len(header) :]):
-        problems.add(line, None, f"the row has {len(cells)} cells where the header has {len(header)} columns.")
+    if not check_length(layout, line, cells, problems):
         return None
     t: float | None = None
     values: dict[int, float] = {}
     sigmas: dict[int, float] = {}
-    for name, cell in zip(header, cells, strict=False):
+    for name, cell in zip(layout.header, cells, strict=False):
         position = _POSITIONS.get(name, _SIGMA_NAMES.get(name))
         if not cell:
             if name not in _SIGMA_NAMES:
                 problems.add(line, name, "the cell is empty.")
             continue
         try:
-            value, sigma = parse_value(cell, decimal_comma=decimal_comma)
+            value, sigma = parse_value(cell, decimal_comma=layout.decimal_comma)
         except InputError as error:
             problems.add(line, name, f"{error.message} {error.hint}" if error.hint else error.message)
             continue

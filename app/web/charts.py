@@ -14,7 +14,7 @@ FloatArray = npt.NDArray[np.float64]
 
 WIDTH: Final = 560.0
 HEIGHT: Final = 236.0
-LEFT, RIGHT, TOP, BOTTOM = 62.0, 46.0, 12.0, 40.0
+LEFT, RIGHT, TOP, BOTTOM = 62.0, 56.0, 12.0, 40.0
 STROKES: Final = ("solid", "dash", "chain")
 NAME_GAP: Final = 15.0
 

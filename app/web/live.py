@@ -18,12 +18,14 @@ from fastapi import APIRouter, WebSocket, WebSocketDisconnect
 from pydantic import Field, TypeAdapter, ValidationError
 
 from app.errors import HalfturnError, InputError
+from app.store.canonical import plain
 from app.store.document import SampleDocument, current_property
 from app.tensor.pose import read_pose
 from app.tensor.principal import find_principal
 from app.tensor.surface import SurfaceKind
 from app.web.answers import JsonAnswer
 from app.web.bodies import parse_object
+from app.web.followed import find_followed
 from app.web.kept import crystal_for, crystal_of, entry_of, print_own_unit, tensor_of
 from app.web.parts import Number, Part, Pose, Text, ThreeByThree
 from app.web.posed import describe_pose, describe_subject
@@ -54,6 +56,7 @@ class TensorMessage(Part):
     type: Literal["tensor"]
     sample: Text
     revision: int | None = None
+    at: Number | None = Field(None, description="value of the variable of its series; null is the kept tensor")
 
 
 class SurfaceMessage(Part):
@@ -121,8 +124,11 @@ class Subjects:
             self._kept.move_to_end(key)
         return subject
 
-    def take(self, document: SampleDocument) -> Subject:
-        """The subject of a document's current property. Raises InputError where it has none."""
+    def take(self, document: SampleDocument, at: float | None = None) -> Subject:
+        """The subject of a document's current property, at a value of its series where one is given.
+
+        Raises InputError where it has none.
+        """
         kept = current_property(document)
         if kept is None:
             raise InputError("The sample has no property yet.", field="property", hint="Choose one.")
@@ -135,6 +141,8 @@ class Subjects:
                 kept.kind,
                 list(document.part),
                 fingerprint_readings(document, kept),
+                [plain(entry) for entry in document.series],
+                at,
             ],
             sort_keys=True,
         )
@@ -143,7 +151,10 @@ class Subjects:
         if known is not None:
             return known
         crystal = crystal_for(crystal_of(document.crystal), document.crystal, entry)
+        followed = find_followed(document, crystal, kept)
         tensor = tensor_of(crystal, kept)
+        if at is not None and followed is not None:
+            tensor = followed.take(crystal, kept, at)
         other: Literal["rod", "plate", None] = None
         if entry.long_bar == "rod":
             other = "rod"
@@ -159,6 +170,7 @@ class Subjects:
             other,
             document.part,
             find_settling(crystal, document, kept),
+            None if followed is None else followed.describe(at),
         )
         self._kept[key] = subject
         while len(self._kept) > MOST_SUBJECTS:
@@ -224,7 +236,7 @@ def answer_message(socket: WebSocket, text: str) -> dict[str, Any] | bytes:
     message = read_message(text)
     if isinstance(message, TensorMessage):
         kept = socket.app.state.store.samples.get(message.sample, message.revision)
-        subject = subjects.take(kept.document)
+        subject = subjects.take(kept.document, message.at)
         return {"type": "subject", "sample": message.sample, "revision": kept.revision, **describe_subject(subject)}
     known = subjects.find(message.hash)
     if known is None:

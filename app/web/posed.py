@@ -89,6 +89,7 @@ def describe_subject(subject: Subject) -> dict[str, Any]:
         "negative": bool(np.any(values < 0)),
         "has_region": bool(subject.regions),
         "settling": subject.settling.sentence,
+        "followed": subject.followed,
         "other": {"rod": "long bar", "plate": "wide plate", None: None}[subject.other],
         "step": _print_step(subject),
     }

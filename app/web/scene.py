@@ -48,6 +48,7 @@ class Subject:
         other: what else the value could be read as, see ``app.tensor.sentence.write_sentence``.
         part: the block in mm along x, y, z.
         settling: what would settle the tensor where the readings in use do not tell it.
+        followed: the variable that the picture can follow, for the page; None without a series.
     """
 
     key: str
@@ -58,6 +59,7 @@ class Subject:
     other: Literal["rod", "plate", None]
     part: tuple[float, float, float]
     settling: Settling = NOTHING
+    followed: dict[str, Any] | None = None
 
     @cached_property
     def half(self) -> FloatArray:

@@ -27,6 +27,7 @@ from app.web.property_edits import edit_property, edit_tensor
 from app.web.samples import save_change, store_of
 from app.web.series_charts import SCALE
 from app.web.series_view import change_series, describe_series, fit_kept_series, kept_series
+from app.web.tensor_series_view import describe_tensor_series
 
 page_router = APIRouter(include_in_schema=False)
 router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.ERROR_RESPONSES)
@@ -78,7 +79,9 @@ class UseRequest(Part):
 def series_page(sample_id: str, request: Request, at: float | None = None) -> Response:
     """Cells against temperature, say, and the expansion that they give."""
     kept = store_of(request).samples.get(sample_id)
-    return render_page(request, "series.html", sample_id, "series", **describe_series(kept, at))
+    return render_page(
+        request, "series.html", sample_id, "series", **describe_series(kept, at), **describe_tensor_series(kept)
+    )
 
 
 @router.get("/{sample_id}/series", summary="The kept series of cells, and its expansion at one value of the variable")
@@ -190,6 +193,7 @@ def _render(kept: Kept, at: float | None) -> dict[str, Any]:
         "headline": content["headline"],
         "second_line": content["second_line"],
         "series": content["series"],
+        "table": content["table"],
         "problem": content["problem"],
         "at": None if result is None else result["t"],
         "range": None if result is None else result["range"],

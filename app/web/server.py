@@ -36,6 +36,7 @@ from app.web import (
     static_files,
     tensor_copies,
     tensor_page,
+    tensor_series,
     twin_question,
 )
 from app.web.answers import JsonAnswer
@@ -104,6 +105,7 @@ def create_app(data_dir: Path | None = None) -> FastAPI:
     app.include_router(campaign_calls.router)
     app.include_router(bar_questions.router)
     app.include_router(twin_question.router)
+    app.include_router(tensor_series.router)
     app.include_router(static_files.router)
     app.mount("/static", static_files.RevalidatedFiles(directory=static_folder()), name="static")
     return app

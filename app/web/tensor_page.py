@@ -19,10 +19,10 @@ from app.web.turning import build_view
 router = APIRouter(include_in_schema=False)
 
 
-def build_content(document: Any) -> dict[str, Any]:
+def build_content(document: Any, at: float | None = None) -> dict[str, Any]:
     """What the template shows of a document: the subject and its first picture, or the sentence that says why not."""
     try:
-        subject = subjects.take(document)
+        subject = subjects.take(document, at)
         try:
             kept = plain(document.pose)
             pose = read_pose(kept, subject.crystal)
@@ -38,8 +38,8 @@ def build_content(document: Any) -> dict[str, Any]:
 
 
 @router.get("/samples/{sample_id}/tensor")
-def tensor_page(sample_id: str, request: Request) -> Response:
-    """The tensor of a sample's current property."""
-    content = build_content(store_of(request).samples.get(sample_id).document)
+def tensor_page(sample_id: str, request: Request, at: float | None = None) -> Response:
+    """The tensor of a sample's current property, at a value of its series where one is given."""
+    content = build_content(store_of(request).samples.get(sample_id).document, at)
     block = embed_json({"subject": content["subject"], "first": content["first"]})
     return render_page(request, "tensor.html", sample_id, "tensor", content_json=block, **content)
