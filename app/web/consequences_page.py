@@ -19,6 +19,8 @@ from app.web.answers import JsonAnswer
 from app.web.bodies import StrictRoute
 from app.web.changes import Typed
 from app.web.consequences_view import Asked, choose_panel, describe_consequences
+from app.web.dispersion import describe_dispersion, take_at_wavelength
+from app.web.followed import find_followed
 from app.web.kept import crystal_for, crystal_of, entry_of, pose_of, print_own_unit, tensor_of
 from app.web.pages import templates
 from app.web.parts import Number, Part
@@ -52,7 +54,14 @@ def consequences(sample_id: str, given: ConsequencesRequest, request: Request) -
     crystal = crystal_for(crystal_of(document.crystal), document.crystal, entry)
     estimate = tensor_of(crystal, kept).estimate
     asked, name = _read(crystal, document, given)
+    followed = find_followed(document, crystal, kept) if choose_panel(entry) == "optics" else None
+    taken = take_at_wavelength(crystal, kept, followed, given.wavelength)
+    if taken is not None:
+        estimate = taken[0]
     tables = describe_consequences(crystal, estimate, entry, print_own_unit(kept.unit), asked)
+    if taken is not None and followed is not None:
+        tables[0]["note"] = taken[1]
+        tables.append(describe_dispersion(crystal, kept, entry, followed, asked))
     content = {"tables": tables, "along": name, "panel": choose_panel(entry)}
     return JsonAnswer({**content, "result": templates.get_template("consequences_result.html").render(content)})
 

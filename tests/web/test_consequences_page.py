@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import re
 from pathlib import Path
 from typing import Any
@@ -117,3 +118,23 @@ def test_what_is_wrong_is_told_at_its_field(client: TestClient, asked: Any, fiel
     answer = client.post(f"/api/samples/{sample['id']}/consequences", json=asked)
     assert answer.status_code == 422, answer.text
     assert answer.json()["error"]["field"] == field
+
+
+def test_a_series_in_wavelength_disperses_the_plate(client: TestClient) -> None:
+    crystal = {"cell": [5, 5, 7, 90, 90, 90], "group": "4/mmm"}
+    sample = make(client, crystal, "permittivity", "1", {"11": 2.25, "33": 2.56})
+    # Invented: indices 1.50 and 1.60 at 500 nm, their squares on straight lines in the wavelength.
+    table = "wavelength,11,33\n500,2.25,2.56\n600,2.23,2.54\n700,2.21,2.52\n"
+    answer = client.post(
+        f"/api/samples/{sample['id']}/tensor-series", json={"parent": sample["revision"], "change": {"table": table}}
+    )
+    assert answer.status_code == 200, answer.text
+    rows = ask(client, sample, direction="[1 0 0]", wavelength=650, thickness=0.1)
+    birefringence = math.sqrt(2.53) - math.sqrt(2.22)
+    assert number(rows["A plate / birefringence"]) == pytest.approx(birefringence, rel=1e-4)
+    assert number(rows["A plate / in waves of 650 nm"]) == pytest.approx(birefringence * 1e5 / 650, rel=1e-4)
+    first = rows["Dispersion / 500 nm"]
+    assert "1.60000" in first
+    assert first.endswith(f"{0.1 * 1e5:.5g} nm")
+    beyond = client.post(f"/api/samples/{sample['id']}/consequences", json={"wavelength": 800}).json()
+    assert "beyond what was measured" in beyond["result"]
