@@ -2,7 +2,7 @@
 
 import { achievedOf, changeOf, conditionsOf, sightingsOf, spotsOf, stageOf } from "./cut-state.js";
 import { clearFaults, showFault } from "./faults.js";
-import { currentSample, take as takeChange } from "./page.js";
+import { currentSample, edit, take as takeChange } from "./page.js";
 import { fetchCut, fetchStages, indexSpots, postCut, postStages, seekCut } from "./server.js";
 import { typeset } from "./typeset.js";
 
@@ -133,6 +133,8 @@ mounting.addEventListener("click", (/** @type {any} */ event) => {
   if (act === "copy-stage") keepStage(true);
 });
 
+/** What was last searched for. @type {any} */
+let sought = null;
 get("seek-form")?.addEventListener("submit", async (/** @type {Event} */ event) => {
   event.preventDefault();
   const form = get("seek-form");
@@ -140,11 +142,19 @@ get("seek-form")?.addEventListener("submit", async (/** @type {Event} */ event) 
   try {
     const conditions = conditionsOf([0, 1].map((n) => ({ property: get(`seek-property-${n}`).value, kind: get(`seek-kind-${n}`).value, value: get(`seek-value-${n}`).value })));
     get("sought").innerHTML = (await seekCut(currentSample().id, conditions)).result;
+    sought = conditions;
   } catch (failure) {
     showFault(form, /** @type {any} */ (failure));
   }
 });
 for (const place of [get("sought"), get("cut-result")]) place.addEventListener("click", async (/** @type {any} */ event) => {
+  if (event.target.dataset?.showSought !== undefined) {
+    try {
+      await edit({ looking: { sought } });
+      get("shown-sought").textContent = "It is on the Tensor page's surface.";
+    } catch (failure) { showFault(get("seek-form"), /** @type {any} */ (failure)); }
+    return;
+  }
   const { cut, cutVector, name } = event.target.dataset ?? {};
   if (!cut && !cutVector) return;
   if (!part) await send({ make: true });

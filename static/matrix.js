@@ -70,6 +70,8 @@ export function showSubject(subject) {
   byId("other-head").textContent = subject.other ?? "";
   byId("other-head").hidden = !subject.other;
   byId("region-note").hidden = !subject.has_region;
+  byId("answer-note").hidden = !subject.answer;
+  byId("answer-words").replaceChildren(...typeset(subject.answer ?? ""));
   byId("settling-note").hidden = !subject.settling;
   byId("settling-note").replaceChildren(...typeset(subject.settling ?? ""));
   byId("principal").replaceChildren(...subject.principal.map((/** @type {any} */ p) => el("div", p.locked ? { class: "lk" } : {}, el("dt", {}, el("i", {}, "p"), el("sub", {}, p.name)), el("dd", {}, el("b", {}, p.value), el("span", {}, ...(p.locked ? [lock()] : []), ...[].concat(p.lines).flatMap((line, k) => [...(k ? [el("br")] : []), ...typeset(line)]))))));

@@ -136,6 +136,7 @@ function start({ subject, first }) {
   const refuse = (/** @type {any} */ error) => fault([error.message, error.hint].filter(Boolean).join(" "));
   onForm("block-form", (f) => { edit({ part: ["x", "y", "z"].map((name) => number(f[name])) }).then(() => fault(""), refuse); });
   onForm("keep-pose", (f) => { edit({ poses: { [f.name.value.trim()]: state.pose } }).then(() => { f.name.value = ""; fault(""); }, refuse); });
+  byId("answer-away").addEventListener("click", () => edit({ looking: { sought: null } }).catch(refuse));
   byId("poses").addEventListener("click", (/** @type {any} */ event) => {
     const { pose, forget } = event.target.dataset ?? {};
     if (forget) edit({ poses: { [forget]: null } }).catch(refuse);

@@ -4,20 +4,15 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import replace
-from typing import Annotated, Any, Final, Literal
+from typing import Annotated, Any, Literal
 
 from fastapi import APIRouter, Request, Response
 from pydantic import Field
 
-from app.crystal.crystal import Crystal
-from app.crystal.direction import typeset_indices
-from app.cutting.nearby import Nearby, list_nearby
-from app.cutting.seek import Condition, Sought, seek
-from app.errors import InputError, located
+from app.errors import InputError
 from app.store import Store
 from app.store.document import SampleDocument, change_document
 from app.store.revisions import Kept
-from app.tensor.sentence import place_direction, print_angle
 from app.web import responses
 from app.web.achieved import calibrate_saw, give_achieved
 from app.web.answers import JsonAnswer
@@ -30,20 +25,14 @@ from app.web.pages import embed_json, render_page, templates
 from app.web.parts import Number, Part
 from app.web.samples import save_change, store_of
 from app.web.sightings_view import check_sightings, take_sightings
-from app.web.sought import find_sought
 from app.web.stage_shapes import LabVector
 from app.web.stages import find_stage, list_stages
-from app.web.stereogram import Mark, Picture, Trace, draw_stereogram
-from app.web.stereogram_view import list_poles
 
 page_router = APIRouter(include_in_schema=False)
 router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.ERROR_RESPONSES)
 
 MOST_PARTS = 100
 LONGEST_EDGE = 10_000.0
-NEAR = 3.0
-MOST_NEAR = 16
-KINDS: Final[tuple[Literal["normal", "row"], ...]] = ("normal", "row")
 
 
 class TargetPart(Part):
@@ -120,19 +109,6 @@ class PartRequest(Part):
     )
 
 
-class SoughtCondition(Part):
-    """What is wanted of one property of the sample."""
-
-    property: Typed = Field(description="its id, or rate:ID:ID for the change by temperature between two of one kind")
-    target: Number | Literal["max", "min"]
-
-
-class SeekRequest(Part):
-    """Directions that meet one or two conditions."""
-
-    conditions: Annotated[list[SoughtCondition], Field(min_length=1, max_length=2)]
-
-
 @page_router.get("/samples/{sample_id}/cut")
 def cut_page(sample_id: str, request: Request) -> Response:
     """From a question to a part."""
@@ -166,67 +142,6 @@ def change(sample_id: str, given: PartRequest, request: Request) -> JsonAnswer:
     if given.change is not None:
         _refuse_unreadable(store, replace(kept, document=document))
     return JsonAnswer(_render(store, save_change(store, sample_id, document, given.parent)))
-
-
-@router.post("/{sample_id}/cut/seek", summary="Directions that answer one or two conditions, with what a miscut costs")
-def find(sample_id: str, given: SeekRequest, request: Request) -> JsonAnswer:
-    """``result`` is a piece of the page; nothing is kept."""
-    document = store_of(request).samples.get(sample_id).document
-    crystal = crystal_of(document.crystal)
-    conditions: list[Condition] = []
-    named = []
-    for number, wanted in enumerate(given.conditions):
-        with located(f"conditions[{number}].property"):
-            sought_of = find_sought(crystal, document, wanted.property)
-        conditions.append(Condition(sought_of.matrix, wanted.target))
-        named.append({"name": sought_of.name, "unit": sought_of.unit})
-    sought = seek(conditions)
-    content = {
-        "sentence": sought.sentence,
-        "properties": named,
-        "lines": [
-            {
-                "xyz": line.tolist(),
-                "place": place_direction(crystal, line).text,
-                "values": [_print(value) for value in values],
-                "slopes": [_print(slope) for slope in slopes],
-            }
-            for line, values, slopes in zip(
-                sought.locus.lines, sought.values.tolist(), sought.slopes.tolist(), strict=True
-            )
-        ],
-        "near": [
-            {
-                "text": near.text,
-                "name": typeset_indices(near.text),
-                "off": print_angle(near.off),
-                "values": [_print(value) for value in near.values.tolist()],
-            }
-            for near in _list_near(crystal, sought)
-        ],
-        "below": None if sought.fraction_below is None else f"{100 * sought.fraction_below:.4g} %",
-        "stereogram": draw_stereogram(
-            crystal,
-            Picture(
-                [Mark(line, "target", "", line=True) for line in sought.locus.lines] + list_poles(crystal),
-                [Trace(curve, "answer") for curve in sought.curves],
-            ),
-            title=f"Stereogram: {sought.sentence}",
-        ),
-    }
-    piece = templates.get_template("cut_sought.html").render(content)
-    return JsonAnswer({"sentence": sought.sentence, "result": piece})
-
-
-def _list_near(crystal: Crystal, sought: Sought) -> list[Nearby]:
-    found = [
-        near for kind in KINDS for near in list_nearby(crystal, sought.locus, sought.conditions, kind, within=NEAR)
-    ]
-    return sorted(found, key=lambda near: near.off)[:MOST_NEAR]
-
-
-def _print(value: float) -> str:
-    return f"{value:.5g}".replace("-", "−")
 
 
 def _apply(document: SampleDocument, given: PartRequest) -> SampleDocument:

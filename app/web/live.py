@@ -31,6 +31,7 @@ from app.web.parts import Number, Part, Pose, Text, ThreeByThree
 from app.web.posed import describe_pose, describe_subject
 from app.web.scene import Subject, pack_scene
 from app.web.settling import find_settling, fingerprint_readings
+from app.web.sought import find_answer, fingerprint_answer
 from app.web.turning import (
     Caught,
     Hold,
@@ -141,6 +142,7 @@ class Subjects:
                 kept.kind,
                 list(document.part),
                 fingerprint_readings(document, kept),
+                fingerprint_answer(document),
                 [plain(entry) for entry in document.series],
                 at,
             ],
@@ -171,6 +173,7 @@ class Subjects:
             document.part,
             find_settling(crystal, document, kept),
             None if followed is None else followed.describe(at),
+            find_answer(crystal_of(document.crystal), document),
         )
         self._kept[key] = subject
         while len(self._kept) > MOST_SUBJECTS:

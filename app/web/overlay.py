@@ -58,7 +58,8 @@ def draw_overlay(
     _draw_numbers(scene, screen, texts)
     _draw_crystal(subject, scene, screen, marks, texts)
     _draw_principal(subject, scene, screen, marks, texts)
-    _draw_settling(subject, scene, screen, marks)
+    _draw_answer(subject, scene, screen, marks)
+    _draw_targets(subject, scene, screen, marks)
     return {"shapes": block_back + marks + block_front, "texts": texts}
 
 
@@ -214,9 +215,20 @@ def _draw_principal(subject: Subject, scene: Scene, screen: FloatArray, marks: l
                 texts.append(_text("remark", float(x) + 12, float(y) + 5, [["long is small", "plain"]], "start"))
 
 
-def _draw_settling(subject: Subject, scene: Scene, screen: FloatArray, marks: list[Shape]) -> None:
-    """Targets where a further reading would see what the readings in use do not."""
-    for direction in subject.settling.directions:
+def _draw_answer(subject: Subject, scene: Scene, screen: FloatArray, marks: list[Shape]) -> None:
+    """Lines on the surface along which a search is answered."""
+    for curve in () if subject.answer is None else subject.answer.curves:
+        points = curve * scene.radius(curve)[:, None]
+        shown = ~np.isnan(points[:, 0])
+        points = np.nan_to_num(points)
+        shown &= ~_hidden(scene, screen, points * 1.012)
+        marks.append(shape("front", "answer", write_runs(points @ screen.T, shown)))
+
+
+def _draw_targets(subject: Subject, scene: Scene, screen: FloatArray, marks: list[Shape]) -> None:
+    """Where a further reading would see what the readings in use do not, and single directions that answer a search."""
+    found = [] if subject.answer is None else list(subject.answer.directions)
+    for direction in [*subject.settling.directions, *found]:
         radius = float(scene.radius(direction))
         for sense in (1.0, -1.0):
             point = direction * sense * (radius if np.isfinite(radius) else scene.reach)

@@ -90,6 +90,7 @@ def describe_subject(subject: Subject) -> dict[str, Any]:
         "has_region": bool(subject.regions),
         "settling": subject.settling.sentence,
         "followed": subject.followed,
+        "answer": None if subject.answer is None else subject.answer.sentence,
         "other": {"rod": "long bar", "plate": "wide plate", None: None}[subject.other],
         "step": _print_step(subject),
     }

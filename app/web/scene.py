@@ -24,6 +24,7 @@ from app.tensor.surface import Surface, SurfaceKind, build_surface
 from app.tensor.surface_lines import Levels, SurfaceLine, choose_levels, value_lines
 from app.tensor.tensor import PropertyTensor
 from app.web.settling import NOTHING, Settling
+from app.web.sought import Answer
 
 FloatArray = npt.NDArray[np.float64]
 
@@ -49,6 +50,7 @@ class Subject:
         part: the block in mm along x, y, z.
         settling: what would settle the tensor where the readings in use do not tell it.
         followed: the variable that the picture can follow, for the page; None without a series.
+        answer: directions that a search of the Cut page found, where the sample keeps it for the scene.
     """
 
     key: str
@@ -60,6 +62,7 @@ class Subject:
     part: tuple[float, float, float]
     settling: Settling = NOTHING
     followed: dict[str, Any] | None = None
+    answer: Answer | None = None
 
     @cached_property
     def half(self) -> FloatArray:

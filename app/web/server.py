@@ -30,6 +30,7 @@ from app.web import (
     series_calls,
     series_page,
     sheet_page,
+    sought_page,
     spots,
     stage_calls,
     stages,
@@ -105,6 +106,7 @@ def create_app(data_dir: Path | None = None) -> FastAPI:
     app.include_router(campaign_calls.router)
     app.include_router(bar_questions.router)
     app.include_router(twin_question.router)
+    app.include_router(sought_page.router)
     app.include_router(tensor_series.router)
     app.include_router(static_files.router)
     app.mount("/static", static_files.RevalidatedFiles(directory=static_folder()), name="static")

@@ -2,14 +2,17 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from itertools import combinations
+from typing import Any
 
 import numpy as np
 import numpy.typing as npt
 
 from app.crystal.crystal import Crystal
-from app.errors import InputError
+from app.cutting.seek import Condition, Sought, seek
+from app.errors import HalfturnError, InputError, located
 from app.store.document import KeptProperty, SampleDocument, find_property
 from app.web.kept import crystal_for, entry_of, print_own_unit, tensor_of
 
@@ -54,6 +57,52 @@ def find_sought(crystal: Crystal, document: SampleDocument, key: str) -> SoughtT
     change = (_matrix(crystal, document, high) - _matrix(crystal, document, low)) / span
     unit = _print_unit(low)
     return SoughtTensor(key, f"change of {low.name} per kelvin", f"{unit}/K" if unit else "1/K", change)
+
+
+def take_conditions(
+    crystal: Crystal, document: SampleDocument, wanted: Sequence[Mapping[str, Any]]
+) -> tuple[Sought, list[dict[str, str]]]:
+    """The answer to one or two {property, target}, and name and unit of each property.
+
+    Raises:
+        InputError: at ``conditions[i].property`` or as ``seek`` does.
+    """
+    conditions, named = [], []
+    for number, condition in enumerate(wanted):
+        with located(f"conditions[{number}].property"):
+            found = find_sought(crystal, document, str(condition["property"]))
+        conditions.append(Condition(found.matrix, condition["target"]))
+        named.append({"name": found.name, "unit": found.unit})
+    return seek(conditions), named
+
+
+@dataclass(frozen=True)
+class Answer:
+    """A search that is shown in the scene: lines of directions, single ones (m, 3), and its sentence."""
+
+    curves: tuple[FloatArray, ...]
+    directions: FloatArray
+    sentence: str
+
+
+def find_answer(crystal: Crystal, document: SampleDocument) -> Answer | None:
+    """The answer to the search that the sample keeps for its scene; None where there is none any more."""
+    wanted = document.plain()["looking"].get("sought")
+    if not wanted:
+        return None
+    try:
+        sought, _ = take_conditions(crystal, document, wanted)
+    except (HalfturnError, KeyError, TypeError):
+        # The property was taken out, or what is kept is of another version.
+        return None
+    return Answer(sought.curves, np.array(sought.locus.lines).reshape(-1, 3), sought.sentence)
+
+
+def fingerprint_answer(document: SampleDocument) -> Any:
+    """What the answer depends on beside the crystal, for a hash."""
+    plain = document.plain()
+    wanted = plain["looking"].get("sought")
+    return [wanted, plain["properties"]] if wanted else None
 
 
 def _matrix(crystal: Crystal, document: SampleDocument, kept: KeptProperty) -> FloatArray:

@@ -123,3 +123,19 @@ def test_it_fits_and_has_no_accessibility_violation(page: Page, served: Served, 
     expect(page.locator("#headline")).to_contain_text("Part 1")
     assert page.evaluate("document.documentElement.scrollWidth - window.innerWidth") <= 1
     assert [violation["id"] for violation in Axe().run(page).response["violations"]] == []
+
+
+def test_a_search_is_shown_on_the_scene_and_put_away(page: Page, served: Served) -> None:
+    sample = open_cut(page, served)
+    page.get_by_text("Find a direction").click()
+    page.locator("#seek-kind-0").select_option("value")
+    page.locator("#seek-value-0").fill("15")
+    page.locator("#seek-form button[type=submit]").click()
+    page.get_by_role("button", name="Show it on the scene").click()
+    expect(page.locator("#shown-sought")).to_contain_text("Tensor page")
+    page.goto(f"/samples/{sample}/tensor", wait_until="networkidle")
+    expect(page.locator("#answer-note")).to_be_visible()
+    expect(page.locator("svg.draw.front path.answer").first).to_be_attached()
+    page.get_by_role("button", name="put them away").click()
+    expect(page.locator("#answer-note")).to_be_hidden()
+    expect(page.locator("svg.draw.front path.answer")).to_have_count(0)

@@ -72,3 +72,19 @@ def test_what_would_settle_few_readings_is_lit_on_the_surface() -> None:
     assert SUBJECT.settling.sentence is None
     turned = change_document(document, {"pose": {"axis": "[0 1 0]", "angle": 20}})
     assert Subjects().take(turned).key == SUBJECT.key
+
+
+def test_a_search_kept_for_the_scene_is_drawn_where_its_value_is() -> None:
+    document = demonstration_documents()[0]
+    name = document.plain()["properties"][0]["id"]
+    asked = change_document(document, {"looking": {"sought": [{"property": name, "target": 15.0}]}})
+    subject = Subjects().take(asked)
+    assert subject.answer is not None
+    matrix = np.array([[13.2, 0, 1.85], [0, 24.6, 0], [1.85, 0, 15.9]])
+    for curve in subject.answer.curves:
+        np.testing.assert_allclose(np.einsum("ni,ij,nj->n", curve, matrix, curve), 15.0, atol=1e-9)
+    turn = {"type": "turn", "hash": subject.key, "seq": 1, "pose": START}
+    answer = answer_turn(subject, TurnMessage.model_validate(turn))
+    assert any(shape["class"] == "answer" for shape in answer["overlay"]["shapes"])  # type: ignore[index]
+    gone = change_document(document, {"looking": {"sought": [{"property": "no such one", "target": 15.0}]}})
+    assert Subjects().take(gone).answer is None
