@@ -111,26 +111,26 @@ def _draw_rim(scene: Scene, screen: FloatArray, marks: list[Shape]) -> None:
     marks.append(shape("front", "outline", path))
 
 
+def _engrave(scene: Scene, screen: FloatArray, directions: FloatArray, name: str, marks: list[Shape]) -> None:
+    """A line of directions, shape (n, 3), on the surface, where it is there and not hidden."""
+    points = directions * scene.radius(directions)[:, None]
+    shown = ~np.isnan(points[:, 0])
+    points = np.nan_to_num(points)
+    shown &= ~_hidden(scene, screen, points * 1.012)
+    marks.append(shape("front", name, write_runs(points @ screen.T, shown)))
+
+
 def _draw_mirrors(subject: Subject, scene: Scene, screen: FloatArray, marks: list[Shape]) -> None:
     angles = np.linspace(0.0, 2.0 * np.pi, CURVE_POINTS)
     for normal in subject.mirrors:
         across = np.linalg.svd(normal[None, :])[2][1:]
         directions = np.cos(angles)[:, None] * across[0] + np.sin(angles)[:, None] * across[1]
-        points = directions * scene.radius(directions)[:, None]
-        shown = ~np.isnan(points[:, 0])
-        points = np.nan_to_num(points)
-        shown &= ~_hidden(scene, screen, points * 1.012)
-        marks.append(shape("front", "mirror", write_runs(points @ screen.T, shown)))
+        _engrave(scene, screen, directions, "mirror", marks)
 
 
 def _draw_regions(subject: Subject, scene: Scene, screen: FloatArray, marks: list[Shape]) -> None:
     for kind, curve in subject.regions:
-        points = curve * scene.radius(curve)[:, None]
-        shown = ~np.isnan(points[:, 0])
-        points = np.nan_to_num(points)
-        shown &= ~_hidden(scene, screen, points * 1.012)
-        name = "region" if kind == "line" else "region area"
-        marks.append(shape("front", name, write_runs(points @ screen.T, shown)))
+        _engrave(scene, screen, curve, "region" if kind == "line" else "region area", marks)
 
 
 def _draw_numbers(scene: Scene, screen: FloatArray, texts: list[Shape]) -> None:
@@ -218,11 +218,7 @@ def _draw_principal(subject: Subject, scene: Scene, screen: FloatArray, marks: l
 def _draw_answer(subject: Subject, scene: Scene, screen: FloatArray, marks: list[Shape]) -> None:
     """Lines on the surface along which a search is answered."""
     for curve in () if subject.answer is None else subject.answer.curves:
-        points = curve * scene.radius(curve)[:, None]
-        shown = ~np.isnan(points[:, 0])
-        points = np.nan_to_num(points)
-        shown &= ~_hidden(scene, screen, points * 1.012)
-        marks.append(shape("front", "answer", write_runs(points @ screen.T, shown)))
+        _engrave(scene, screen, curve, "answer", marks)
 
 
 def _draw_targets(subject: Subject, scene: Scene, screen: FloatArray, marks: list[Shape]) -> None:

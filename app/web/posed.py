@@ -7,8 +7,11 @@ from typing import Any, Final
 import numpy as np
 import numpy.typing as npt
 
+from app.crystal.crystal import Crystal
 from app.crystal.direction import format_indices, parse_direction, typeset_indices
 from app.crystal.lattice import find_nearest
+from app.tensor.estimate import Estimate
+from app.tensor.form import Form
 from app.tensor.kind import LABELS
 from app.tensor.lock import CellLock, explain_cells
 from app.tensor.pose import AXIS_LETTERS, Pose
@@ -60,6 +63,21 @@ def render_cells(subject: Subject, pose: Pose | None = None) -> list[list[dict[s
             None if sigmas is None else float(sigmas.ravel()[position]),
         )
         for position, lock in enumerate(locks)
+    ]
+    return [cells[0:3], cells[3:6], cells[6:9]]
+
+
+def render_matrix(crystal: Crystal, form: Form, estimate: Estimate) -> list[list[dict[str, Any]]]:
+    """Nine cells in rows of an estimate in the crystal frame, as ``render_cells`` has them."""
+    sigmas = estimate.sigma_matrix
+    cells = [
+        _render_cell(
+            LABELS[place],
+            lock,
+            float(estimate.matrix.flat[place]),
+            None if sigmas is None else float(sigmas.flat[place]),
+        )
+        for place, lock in enumerate(explain_cells(crystal, form))
     ]
     return [cells[0:3], cells[3:6], cells[6:9]]
 

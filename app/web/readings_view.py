@@ -24,11 +24,10 @@ from app.readings.table import write_table
 from app.store.document import KeptProperty, KeptReading, current_property, readings_of
 from app.store.revisions import Kept
 from app.tensor.form import build_form
-from app.tensor.lock import explain_cells
 from app.tensor.printing import print_value
 from app.web.kept import crystal_for, crystal_of, entry_of, kind_of, pose_of, print_own_unit
 from app.web.kept_readings import fit_document, take_all
-from app.web.posed import render_number
+from app.web.posed import render_matrix
 from app.web.readings_picture import draw_readings
 from app.web.residual_plots import plot_residuals
 
@@ -137,18 +136,6 @@ def _describe_fit(crystal: Crystal, fit: Fit, readings: list[Reading]) -> dict[s
         quality = "none to spare, so nothing is checked."
     else:
         quality = f"χ² {fit.chi2:.3g} on {fit.dof} to spare{judged}."
-    sigmas = fit.estimate.sigma_matrix
-    cells = [
-        {
-            "state": lock.state,
-            "equals": lock.equals,
-            "because": lock.because,
-            "number": render_number(
-                float(fit.estimate.matrix.flat[position]), None if sigmas is None else float(sigmas.flat[position])
-            ),
-        }
-        for position, lock in enumerate(explain_cells(crystal, fit.form))
-    ]
     return {
         "headline": f"{_count(readings)} {'gives' if len(readings) == 1 else 'give'} {fit.form.count} "
         f"{'cell' if fit.form.count == 1 else 'cells'}: {quality}",
@@ -156,7 +143,7 @@ def _describe_fit(crystal: Crystal, fit: Fit, readings: list[Reading]) -> dict[s
         "residuals": _describe_residuals(fit, readings),
         "result": {
             "determined": True,
-            "cells": [cells[0:3], cells[3:6], cells[6:9]],
+            "cells": render_matrix(crystal, fit.form, fit.estimate),
             "frame": fit.estimate.frame,
             "rank": fit.rank,
             "count": fit.form.count,

@@ -20,16 +20,14 @@ from app.series.tensor_table import read_tensor_table
 from app.store.canonical import plain
 from app.store.document import KeptProperty, SampleDocument, readings_of
 from app.store.revisions import Kept
-from app.tensor.estimate import Estimate
 from app.tensor.form import build_form
-from app.tensor.lock import explain_cells
 from app.tensor.principal import find_principal
 from app.tensor.printing import print_value
 from app.tensor.tensor import build_tensor
 from app.web.charts import STROKES, Curve, Points, draw_chart
 from app.web.kept import kind_of, pose_of, print_own_unit
 from app.web.kept_readings import take_readings
-from app.web.posed import render_number
+from app.web.posed import render_matrix
 from app.web.readings_view import require_property
 from app.web.series_view import BEYOND, PLACES, VARIABLES
 
@@ -203,7 +201,7 @@ def _describe(crystal: Crystal, shown: KeptProperty, series: PropertySeries, at:
             "extrapolated": bool(here.extrapolated[0]),
             "unit": unit,
             "frame": estimate.frame,
-            "cells": _render_cells(crystal, series.fit, estimate),
+            "cells": render_matrix(crystal, series.fit.form, estimate),
             "charts": _draw(series, curve, t, unit),
             "degree": series.fit.degree,
             "chi2": f"{series.fit.chi2:.3g}",
@@ -213,22 +211,6 @@ def _describe(crystal: Crystal, shown: KeptProperty, series: PropertySeries, at:
             "from": {"sigma": "the stated σ", "scatter": "the scatter", None: "nothing"}[series.fit.covariance_from],
         },
     }
-
-
-def _render_cells(crystal: Crystal, fit: TensorFit, estimate: Estimate) -> list[list[dict[str, Any]]]:
-    sigmas = estimate.sigma_matrix
-    cells = [
-        {
-            "state": lock.state,
-            "equals": lock.equals,
-            "because": lock.because,
-            "number": render_number(
-                float(estimate.matrix.flat[place]), None if sigmas is None else float(sigmas.flat[place])
-            ),
-        }
-        for place, lock in enumerate(explain_cells(crystal, fit.form))
-    ]
-    return [cells[0:3], cells[3:6], cells[6:9]]
 
 
 def _draw(series: PropertySeries, curve: TensorCurve, t: float, unit: str) -> list[dict[str, str]]:
