@@ -29,8 +29,11 @@ PATTERNS = {"ellipsoid": ELLIPSOID, "one sheet": ONE_SHEET, "two sheets": TWO_SH
 
 
 def make_subject(matrix: Any, crystal: Crystal = TRICLINIC, kind: Kind | None = None, **more: Any) -> Subject:
-    """A subject of a matrix in the crystal frame; ``more`` are a covariance or members of the subject."""
-    given = {} if matrix is None else {"matrix": np.asarray(matrix, dtype=np.float64)}
+    """A subject of a matrix in the crystal frame, or of free cells by label.
+
+    ``more`` are a covariance and members of the subject.
+    """
+    given: dict[str, Any] = {"free": matrix} if isinstance(matrix, dict) else {"matrix": np.asarray(matrix)}
     tensor = build_tensor(crystal, kind or Kind(), covariance=more.pop("covariance", None), **given)
     fields = {"key": "invented", "unit": "W/(m·K)", "other": None, "part": (5.0, 5.0, 6.0), **more}
     return Subject(crystal=crystal, tensor=tensor, principal=find_principal(tensor.estimate), **fields)
