@@ -59,7 +59,26 @@ def _is_kept(triple: list[int]) -> bool:
 
 def compute_directions(crystal: Crystal, kind: Literal["row", "normal"], indices: npt.NDArray[np.number]) -> FloatArray:
     """Unit vectors (..., 3) in the crystal frame of rows or normals with indices (..., 3)."""
-    basis = crystal.require_basis() if kind == "row" else crystal.reciprocal
+    return _compute_units(_basis_of(crystal, kind), indices)
+
+
+def list_directions(crystal: Crystal, kind: Literal["row", "normal"], max_index: int) -> FloatArray:
+    """The directions of ``list_indices``, shape (n, 3): kept for every lattice, so they cannot be written to."""
+    return _list_directions(_basis_of(crystal, kind).tobytes(), max_index)
+
+
+@lru_cache(maxsize=64)
+def _list_directions(content: bytes, max_index: int) -> FloatArray:
+    directions = _compute_units(np.frombuffer(content, dtype=np.float64).reshape(3, 3), list_indices(max_index))
+    directions.setflags(write=False)
+    return directions
+
+
+def _basis_of(crystal: Crystal, kind: Literal["row", "normal"]) -> FloatArray:
+    return crystal.require_basis() if kind == "row" else crystal.reciprocal
+
+
+def _compute_units(basis: FloatArray, indices: npt.NDArray[np.number]) -> FloatArray:
     vectors = np.asarray(indices, dtype=np.float64) @ basis.T
     unit: FloatArray = vectors / np.linalg.norm(vectors, axis=-1, keepdims=True)
     return unit
@@ -73,7 +92,7 @@ def find_nearest(
     Its index form points the way that ``direction`` does.
     """
     indices = list_indices(max_index)
-    vectors = compute_directions(crystal, kind, indices)
+    vectors = list_directions(crystal, kind, max_index)
     cosines = vectors @ direction
     across = np.linalg.norm(np.cross(vectors, direction), axis=-1)
     angles = np.rad2deg(np.arctan2(across, np.abs(cosines)))

@@ -49,7 +49,62 @@ def explain_cells(crystal: Crystal, form: Form, pose: FloatArray | None = None) 
         pose: C of shape (3, 3) for the cells of a specimen frame; None for the crystal frame.
     """
     cells = express_cells(form, pose)
-    return [_explain_cell(crystal, form, cells, position, pose) for position in range(9)]
+    functionals = _list_functionals(cells, pose)
+    causes = _list_causes(crystal.rotations.tobytes(), len(crystal.rotations), form.kind)
+    # What each cause leaves of each functional: shape (causes, 9).
+    holds = np.linalg.norm(functionals @ causes.allowed, axis=-1) <= ZERO_TOLERANCE
+    locks = []
+    for position, (state, terms) in enumerate(zip(cells.states, cells.terms, strict=True)):
+        if state == "free":
+            locks.append(CellLock(state, terms, "free: no operation of the group decides it", None))
+            continue
+        relation = cells.relations.get(position, {})
+        cell = _LockedCell(crystal, form.kind, functionals[position], position, relation, pose)
+        cause = _find_cause(cell, causes, holds[:, position])
+        if state == "zero":
+            locks.append(CellLock(state, terms, f"zero: {cause}", None))
+            continue
+        equals = format_relation(relation, cell.axes)
+        locks.append(CellLock(state, terms, f"tied, {name_cell(position, cell.axes)} = {equals}: {cause}", equals))
+    return locks
+
+
+@dataclass(frozen=True)
+class _LockedCell:
+    """A zero or tied cell in the frame of a pose, and the functional of the crystal frame's cells that vanishes."""
+
+    crystal: Crystal
+    kind: Kind
+    functional: FloatArray
+    position: int
+    relation: dict[int, float]
+    pose: FloatArray | None
+
+    @property
+    def axes(self) -> tuple[str, str, str] | None:
+        return None if self.pose is None else SPECIMEN_AXES
+
+
+@dataclass(frozen=True)
+class _Causes:
+    """What restricts a tensor: its own inner symmetry, then the operations that do so alone.
+
+    Attributes:
+        operations: their numbers in the group; the first cause, the inner symmetry, has none.
+        allowed: shape (1 + number of operations, 9, 9), projectors on what each allows, the inner symmetry first.
+    """
+
+    operations: tuple[int, ...]
+    allowed: FloatArray
+
+
+def _list_functionals(cells: CellTerms, pose: FloatArray | None) -> FloatArray:
+    """Of every cell less what it equals, as a functional of the crystal frame's nine cells; shape (9, 9)."""
+    wanted = np.eye(9)
+    for position, relation in cells.relations.items():
+        for cell, coefficient in relation.items():
+            wanted[position, cell] -= coefficient
+    return wanted if pose is None else (pose.T @ wanted.reshape(9, 3, 3) @ pose).reshape(9, 9)
 
 
 def format_relation(relation: dict[int, float], axes: tuple[str, str, str] | None) -> str:
@@ -64,69 +119,53 @@ def format_relation(relation: dict[int, float], axes: tuple[str, str, str] | Non
     return "".join(parts)
 
 
-def _explain_cell(crystal: Crystal, form: Form, cells: CellTerms, position: int, pose: FloatArray | None) -> CellLock:
-    axes = None if pose is None else SPECIMEN_AXES
-    state, terms = cells.states[position], cells.terms[position]
-    label = name_cell(position, axes)
-    if state == "free":
-        return CellLock(state, terms, "free: no operation of the group decides it", None)
-    relation = cells.relations.get(position, {})
-    wanted = np.zeros(9)
-    wanted[position] = 1.0
-    for cell, coefficient in relation.items():
-        wanted[cell] -= coefficient
-    # The same functional of the crystal frame's cells.
-    functional = wanted if pose is None else wanted @ np.kron(pose, pose)
-    equals = format_relation(relation, axes) if state == "tied" else None
-    cause = _find_cause(crystal, form.kind, functional, position, relation, pose)
-    if state == "zero":
-        return CellLock(state, terms, f"zero: {cause}", None)
-    return CellLock(state, terms, f"tied, {label} = {equals}: {cause}", equals)
-
-
-def _find_cause(
-    crystal: Crystal,
-    kind: Kind,
-    functional: FloatArray,
-    position: int,
-    relation: dict[int, float],
-    pose: FloatArray | None,
-) -> str:
-    if np.linalg.norm(functional @ kind.intrinsic_projector) <= ZERO_TOLERANCE:
-        return f"the tensor is {kind.intrinsic} by itself"
-    causes = _list_causes(crystal.rotations.tobytes(), len(crystal.rotations), kind)
-    for index, allowed in causes:
-        if np.linalg.norm(functional @ allowed) <= ZERO_TOLERANCE:
-            operation = crystal.operations[index]
-            name = _name_operation(crystal, operation, pose)
-            # Of all turns or all mirrors of a limiting group, the stand-in's own effect is not the reason.
-            stands_in = ANY in name
-            effect = NO_OTHER_VALUE if stands_in else _describe_effect(operation, kind, position, relation, pose)
-            return f"the {name} {effect}"
-    for first, second in combinations(causes, 2):
-        stacked = np.vstack([np.eye(9) - first[1], np.eye(9) - second[1]])
-        space = np.linalg.svd(stacked)
-        if np.linalg.norm(space.Vh[space.S <= ZERO_TOLERANCE] @ functional) <= ZERO_TOLERANCE:
-            names = [_name_operation(crystal, crystal.operations[index], pose) for index, _ in (first, second)]
-            enough = next((name for name in names if ANY in name), None)
-            if enough is not None:
-                return f"the {enough} {NO_OTHER_VALUE}"
-            return f"the {names[0]} and the {names[1]} together leave it no other value"
+def _find_cause(cell: _LockedCell, causes: _Causes, holds: npt.NDArray[np.bool_]) -> str:
+    if holds[0]:
+        return f"the tensor is {cell.kind.intrinsic} by itself"
+    operations = cell.crystal.operations
+    if np.any(holds):
+        operation = operations[causes.operations[int(np.argmax(holds)) - 1]]
+        name = _name_operation(cell, operation)
+        # Of all turns or all mirrors of a limiting group, the stand-in's own effect is not the reason.
+        return f"the {name} {NO_OTHER_VALUE if ANY in name else _describe_effect(cell, operation)}"
+    rotations = cell.crystal.rotations
+    pairs, common = _list_pairs(rotations.tobytes(), len(rotations), cell.kind)
+    together = np.linalg.norm(cell.functional @ common, axis=-1) <= ZERO_TOLERANCE
+    if np.any(together):
+        names = [_name_operation(cell, operations[index]) for index in pairs[int(np.argmax(together))]]
+        enough = next((name for name in names if ANY in name), None)
+        if enough is not None:
+            return f"the {enough} {NO_OTHER_VALUE}"
+        return f"the {names[0]} and the {names[1]} together leave it no other value"
     return "the operations of the group together leave it no other value"
 
 
 @lru_cache(maxsize=128)
-def _list_causes(content: bytes, count: int, kind: Kind) -> tuple[tuple[int, FloatArray], ...]:
-    """For the operations that restrict the tensor alone: their number in the group, and what they allow (9 × 9)."""
+def _list_causes(content: bytes, count: int, kind: Kind) -> _Causes:
     rotations = np.frombuffer(content, dtype=np.float64).reshape(count, 3, 3)
     operations = [describe_operation(matrix, None) for matrix in rotations]
-    causes: list[tuple[int, FloatArray]] = []
+    numbers: list[int] = []
+    allowed = [kind.intrinsic_projector]
     for index in sorted(range(count), key=lambda number: _rank_operation(operations[number])):
         projector = _average_powers(rotations[index], kind)
-        known = [kind.intrinsic_projector, *(allowed for _, allowed in causes)]
-        if not any(np.allclose(projector, allowed, atol=ZERO_TOLERANCE) for allowed in known):
-            causes.append((index, projector))
-    return tuple(causes)
+        if not any(np.allclose(projector, known, atol=ZERO_TOLERANCE) for known in allowed):
+            numbers.append(index)
+            allowed.append(projector)
+    return _Causes(tuple(numbers), np.array(allowed))
+
+
+@lru_cache(maxsize=128)
+def _list_pairs(content: bytes, count: int, kind: Kind) -> tuple[list[tuple[int, int]], FloatArray]:
+    """Pairs of the operations of ``_list_causes``, and projectors on what both allow, shape (pairs, 9, 9)."""
+    causes = _list_causes(content, count, kind)
+    pairs, common = [], [np.zeros((0, 9, 9))]
+    for first, second in combinations(range(len(causes.operations)), 2):
+        stacked = np.vstack([np.eye(9) - causes.allowed[1 + first], np.eye(9) - causes.allowed[1 + second]])
+        space = np.linalg.svd(stacked)
+        kept = space.Vh[space.S <= ZERO_TOLERANCE]
+        pairs.append((causes.operations[first], causes.operations[second]))
+        common.append((kept.T @ kept)[None])
+    return pairs, np.concatenate(common)
 
 
 def _rank_operation(operation: Operation) -> tuple[int, int, bool]:
@@ -147,19 +186,20 @@ def _average_powers(matrix: FloatArray, kind: Kind) -> FloatArray:
     return averaged
 
 
-def _name_operation(crystal: Crystal, operation: Operation, pose: FloatArray | None) -> str:
+def _name_operation(cell: _LockedCell, operation: Operation) -> str:
     if operation.axis is None:
         return operation.name
-    frame_axis = operation.axis if pose is None else pose @ operation.axis
-    names = _CRYSTAL_AXES if pose is None else SPECIMEN_AXES
+    frame_axis = operation.axis if cell.pose is None else cell.pose @ operation.axis
+    names = cell.axes or _CRYSTAL_AXES
+    group = cell.crystal.group
     along = int(np.argmax(np.abs(frame_axis)))
     where = names[along] if abs(abs(frame_axis[along]) - 1.0) < 1e-12 else None
     inverted = " with inversion" if operation.improper else ""
     if operation.turn == 7:
         return f"turn by any angle{inverted} about {where or 'x3'}"
-    if where is None and crystal.group.symbol.startswith("∞∞"):
+    if where is None and group.symbol.startswith("∞∞"):
         return f"turn by any angle{inverted} about any direction"
-    if where is None and crystal.group.limiting and np.max(np.abs(operation.axis)) < 1.0 - 1e-12:
+    if where is None and group.limiting and np.max(np.abs(operation.axis)) < 1.0 - 1e-12:
         return f"{'mirror across' if operation.improper else 'half-turn about'} any direction at right angles to x3"
     if where is None:
         return operation.name
@@ -169,22 +209,18 @@ def _name_operation(crystal: Crystal, operation: Operation, pose: FloatArray | N
     return f"{name}{inverted} about {where}"
 
 
-def _describe_effect(
-    operation: Operation, kind: Kind, position: int, relation: dict[int, float], pose: FloatArray | None
-) -> str:
-    matrix = operation.matrix if pose is None else pose @ operation.matrix @ pose.T
-    axes = None if pose is None else SPECIMEN_AXES
-    sign = float(kind.signs(matrix))
-    row, column = CELLS[position]
-    # Where the operation only permutes and flips the axes of the cell, say which cell it becomes.
-    products = sign * np.outer(matrix[:, row], matrix[:, column]).ravel()
-    target = int(np.argmax(np.abs(products)))
-    whole = abs(abs(products[target]) - 1.0) < 1e-9
+def _describe_effect(cell: _LockedCell, operation: Operation) -> str:
+    position, axes = cell.position, cell.axes
     shown = name_cell(position, axes)
-    if whole and (target == position) and products[target] < 0 and not relation:
-        return f"turns {shown} into −{shown}"
-    if whole and list(relation) == [target]:
-        return f"turns {shown} into {'−' if products[target] < 0 else ''}{name_cell(target, axes)}"
-    if operation.turn == 1:
-        return f"turns {shown} into −{shown}"
-    return NO_OTHER_VALUE
+    if len(cell.relation) <= 1:
+        matrix = operation.matrix if cell.pose is None else cell.pose @ operation.matrix @ cell.pose.T
+        row, column = CELLS[position]
+        # Where the operation only permutes and flips the axes of the cell, say which cell it becomes.
+        products = float(cell.kind.signs(matrix)) * np.outer(matrix[:, row], matrix[:, column]).ravel()
+        target = int(np.argmax(np.abs(products)))
+        whole = abs(abs(products[target]) - 1.0) < 1e-9
+        if whole and target == position and products[target] < 0 and not cell.relation:
+            return f"turns {shown} into −{shown}"
+        if whole and list(cell.relation) == [target]:
+            return f"turns {shown} into {'−' if products[target] < 0 else ''}{name_cell(target, axes)}"
+    return f"turns {shown} into −{shown}" if operation.turn == 1 else NO_OTHER_VALUE

@@ -6,6 +6,7 @@ A place is named by the direction that the user put there; else by the simplest 
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from typing import Final, Literal
 
@@ -14,7 +15,7 @@ import numpy.typing as npt
 
 from app.crystal.crystal import Crystal
 from app.crystal.direction import format_indices, parse_direction, typeset_indices
-from app.crystal.lattice import compute_directions, list_indices
+from app.crystal.lattice import list_directions, list_indices
 from app.tensor.estimate import Estimate
 from app.tensor.principal import Principal
 from app.tensor.printing import print_value
@@ -24,6 +25,7 @@ FloatArray = npt.NDArray[np.float64]
 Role = Literal["plain", "symbol", "sub", "value", "sigma", "unit"]
 Kind = Literal["row", "normal"]
 Run = tuple[str, Role]
+Other = Literal["rod", "plate", None]
 
 NEAR: Final = 2.0
 """Degrees within which a direction is called by a row or normal."""
@@ -91,25 +93,58 @@ def find_simplest(crystal: Crystal, vector: FloatArray, within: float = NEAR) ->
     if crystal.M is None:
         return None
     indices = list_indices(HIGHEST_INDEX)
-    sizes = np.sum(indices * indices, axis=1)
+    # A little more than asked for is kept by the cosine, which has no digits left at small angles.
+    least = np.cos(np.deg2rad(within)) - 1e-9
     best: tuple[int, int, float, str] | None = None
     kinds: tuple[Kind, ...] = ("normal", "row")
     for rank, kind in enumerate(kinds):
-        vectors = compute_directions(crystal, kind, indices)
-        cosines = vectors @ vector
-        across = np.linalg.norm(np.cross(vectors, vector), axis=1)
-        angles = np.rad2deg(np.arctan2(across, np.abs(cosines)))
-        inside = angles <= within + 1e-9
-        if not np.any(inside):
-            continue
-        candidates = np.flatnonzero(inside & (sizes == np.min(sizes[inside])))
-        chosen = int(candidates[np.argmin(angles[candidates])])
-        sense = -1 if cosines[chosen] < 0 else 1
-        text = format_indices(kind, (sense * indices[chosen]).tolist())
-        found = (int(sizes[chosen]), rank, float(angles[chosen]), text)
-        if best is None or found[:2] < best[:2]:
-            best = found
+        directions = list_directions(crystal, kind, HIGHEST_INDEX)
+        cosines = directions @ vector
+        for number in np.flatnonzero(np.abs(cosines) >= least).tolist():
+            cosine = float(cosines[number])
+            off = float(np.rad2deg(np.arctan2(np.linalg.norm(directions[number] - cosine * vector), abs(cosine))))
+            triple = indices[number].tolist()
+            size = sum(index * index for index in triple)
+            if off <= within + 1e-9 and (best is None or (size, rank, off) < best[:3]):
+                best = (size, rank, off, format_indices(kind, [-index if cosine < 0 else index for index in triple]))
     return None if best is None else (best[3], best[2])
+
+
+@dataclass(frozen=True)
+class Along:
+    """What the tensor does along a direction, as it is printed.
+
+    Attributes:
+        value: nᵀTn.
+        other: 1/(nᵀT⁻¹n); None where that has no value, or is not asked for.
+    """
+
+    value: str
+    other: str | None
+
+
+def print_along(estimate: Estimate, directions: FloatArray, other: Other = "rod") -> list[Along]:
+    """What a tensor does along unit vectors, shape (n, 3), all in the same frame; see ``write_sentence``."""
+    values = _print_each(compute_values(estimate.matrix, directions), estimate.value_sigma(directions))
+    if other is None:
+        return [Along(value, None) for value in values]
+    rods = compute_rod_values(estimate.matrix, directions)
+    finite = np.isfinite(rods)
+    others = _print_each(np.where(finite, rods, 0.0), estimate.rod_sigma(directions))
+    return [
+        Along(value, rod if exists else None)
+        for value, rod, exists in zip(values, others, finite.tolist(), strict=True)
+    ]
+
+
+def _print_each(values: FloatArray, sigmas: FloatArray | None) -> list[str]:
+    """Numbers, shape (n,), with their standard deviations where these are finite."""
+    if sigmas is None:
+        return [print_value(value) for value in values.tolist()]
+    return [
+        print_value(value, sigma if math.isfinite(sigma) else None)
+        for value, sigma in zip(values.tolist(), sigmas.tolist(), strict=True)
+    ]
 
 
 def write_sentence(
@@ -119,7 +154,8 @@ def write_sentence(
     estimate: Estimate,
     principal: Principal,
     unit: str,
-    other: Literal["rod", "plate", None] = "rod",
+    other: Other = "rod",
+    along: Along | None = None,
 ) -> tuple[list[Run], list[Run]]:
     """The answer to the question, as two lines of runs.
 
@@ -131,10 +167,11 @@ def write_sentence(
         principal: its principal axes.
         unit: printed after the value; empty where there is none.
         other: whether a long bar ("rod") or a wide plate ("plate") would read 1/(nᵀA⁻¹n) instead; None where neither.
+        along: what ``print_along`` gives of the axis, where it is known already.
     """
-    value = float(compute_values(estimate.matrix, vector))
-    sigma = estimate.value_sigma(vector)
-    number, spread = split_spread(print_value(value, None if sigma is None else float(sigma)))
+    if along is None:
+        (along,) = print_along(estimate, vector[None], other)
+    number, spread = split_spread(along.value)
     lead: list[Run] = [("Along ", "plain"), (axis, "symbol"), (", ", "plain")]
     lead += [*_mark_symbols(place.text), (": ", "plain"), (number, "value")]
     if spread:
@@ -143,12 +180,9 @@ def write_sentence(
         lead.append((f"\u00a0{unit}", "unit"))
     lead.append((".", "plain"))
     second = _describe_nearest(principal, vector)
-    rod = float(compute_rod_values(estimate.matrix, vector))
-    if other is not None and np.isfinite(rod):
-        rod_sigma = estimate.rod_sigma(vector)
-        printed = print_value(rod, None if rod_sigma is None or not np.isfinite(rod_sigma) else float(rod_sigma))
+    if along.other is not None:
         body = "a long bar" if other == "rod" else "a wide plate"
-        second.append((f"; {body} would read {printed}", "plain"))
+        second.append((f"; {body} would read {along.other}", "plain"))
     second.append((".", "plain"))
     return lead, second
 
@@ -181,7 +215,9 @@ def _describe_nearest(principal: Principal, vector: FloatArray) -> list[Run]:
     arbitrary = principal.arbitrary
     if all(arbitrary):
         return [("The three principal values cannot be told apart: every direction is a principal axis", "plain")]
-    angles = [min(measure_angle(axis, vector), measure_angle(-axis, vector)) for axis in principal.axes]
+    cosines = principal.axes @ vector
+    across = np.linalg.norm(principal.axes - cosines[:, None] * vector, axis=1)
+    angles: list[float] = np.rad2deg(np.arctan2(across, np.abs(cosines))).tolist()
     alone = [index for index in range(3) if not arbitrary[index]]
     nearest = min(alone, key=lambda index: angles[index])
     if len(alone) == 1 and 90.0 - angles[nearest] < angles[nearest]:

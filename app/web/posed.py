@@ -19,18 +19,21 @@ from app.tensor.printing import print_value
 from app.tensor.quadric import name_quadric
 from app.tensor.sentence import (
     ON,
+    Along,
     Place,
     join_runs,
     place_direction,
+    print_along,
     print_angle,
     split_spread,
     write_sentence,
 )
 from app.tensor.surface import SurfaceKind
 from app.tensor.surface_lines import choose_levels
-from app.tensor.values import compute_flux, compute_flux_angles, compute_rod_values, compute_values
+from app.tensor.values import compute_flux, compute_flux_angles, compute_values
 from app.web.overlay import draw_overlay
 from app.web.rendering import render_pose
+from app.web.ruler import render_ruler
 from app.web.scene import Subject
 from app.web.turning import Caught, View, names_of
 
@@ -42,7 +45,10 @@ REGION_FACTOR: Final = 1.96
 
 def render_number(value: float, sigma: float | None) -> dict[str, str]:
     """A printed number in three parts, so that columns align on the point: whole, rest, spread."""
-    printed = print_value(value, None if sigma is None or not np.isfinite(sigma) else sigma)
+    return _part_number(print_value(value, None if sigma is None or not np.isfinite(sigma) else sigma))
+
+
+def _part_number(printed: str) -> dict[str, str]:
     head, spread = split_spread(printed)
     whole, point, rest = head.partition(".")
     return {"text": printed, "whole": whole, "rest": point + rest, "spread": spread}
@@ -53,31 +59,23 @@ def render_cells(subject: Subject, pose: Pose | None = None) -> list[list[dict[s
     estimate = subject.tensor.estimate
     if pose is not None:
         estimate = estimate.turn(pose.matrix, "specimen frame")
-    locks = explain_cells(subject.crystal, subject.tensor.form, None if pose is None else pose.matrix)
-    sigmas = estimate.sigma_matrix
-    cells = [
-        _render_cell(
-            LABELS[position] if pose is None else "xyz"[position // 3] + "xyz"[position % 3],
-            lock,
-            float(estimate.matrix.ravel()[position]),
-            None if sigmas is None else float(sigmas.ravel()[position]),
-        )
-        for position, lock in enumerate(locks)
-    ]
-    return [cells[0:3], cells[3:6], cells[6:9]]
+    return render_matrix(subject.crystal, subject.tensor.form, estimate, pose)
 
 
-def render_matrix(crystal: Crystal, form: Form, estimate: Estimate) -> list[list[dict[str, Any]]]:
-    """Nine cells in rows of an estimate in the crystal frame, as ``render_cells`` has them."""
+def render_matrix(
+    crystal: Crystal, form: Form, estimate: Estimate, pose: Pose | None = None
+) -> list[list[dict[str, Any]]]:
+    """Nine cells in rows, as ``render_cells`` has them, of an estimate in the crystal frame, or in a pose's."""
     sigmas = estimate.sigma_matrix
+    locks = explain_cells(crystal, form, None if pose is None else pose.matrix)
     cells = [
         _render_cell(
-            LABELS[place],
+            LABELS[place] if pose is None else AXIS_LETTERS[place // 3] + AXIS_LETTERS[place % 3],
             lock,
             float(estimate.matrix.flat[place]),
             None if sigmas is None else float(sigmas.flat[place]),
         )
-        for place, lock in enumerate(explain_cells(crystal, form))
+        for place, lock in enumerate(locks)
     ]
     return [cells[0:3], cells[3:6], cells[6:9]]
 
@@ -217,13 +215,13 @@ def describe_pose(
     names = names_of(kept)
     places = [place_direction(subject.crystal, pose.matrix[axis], names.get("xyz"[axis])) for axis in range(3)]
     estimate = subject.tensor.estimate
-    values = compute_values(estimate.matrix, pose.matrix)
-    sigmas = estimate.value_sigma(pose.matrix)
-    numbers = [render_number(float(values[axis]), None if sigmas is None else float(sigmas[axis])) for axis in range(3)]
-    lines = write_sentence("z", places[2], pose.matrix[2], estimate, subject.principal, subject.unit, subject.other)
+    along = print_along(estimate, pose.matrix, subject.other)
+    lines = write_sentence(
+        "z", places[2], pose.matrix[2], estimate, subject.principal, subject.unit, subject.other, along[2]
+    )
     posed = estimate.turn(pose.matrix, "specimen frame")
     labels = {
-        letter: {"value": numbers[axis]["text"], "place": places[axis].text if places[axis].indices else ""}
+        letter: {"value": along[axis].value, "place": places[axis].text if places[axis].indices else ""}
         for axis, letter in enumerate(AXIS_LETTERS)
     }
     screen = view.screen(pose.matrix)
@@ -232,9 +230,9 @@ def describe_pose(
         "view": {"hold": view.hold, "matrix": view.matrix.tolist()},
         "camera": {"eye": (2.0 * screen[2]).tolist(), "up": screen[1].tolist()},
         "posed": posed.matrix.tolist(),
-        "cells": render_cells(subject, pose),
-        "along": _render_along(subject, pose, numbers),
-        "ruler": _render_ruler(subject, values),
+        "cells": render_matrix(subject.crystal, subject.tensor.form, posed, pose),
+        "along": _render_along(subject, pose, along),
+        "ruler": render_ruler(subject, compute_values(estimate.matrix, pose.matrix)),
         "sentence": {"lines": [[list(run) for run in line] for line in lines], "text": join_runs(*lines)},
         "where": _say_where(pose, kept, places),
         "caught": None if caught is None else f"{caught.axis}: on {_typeset(caught.on)}",
@@ -247,44 +245,18 @@ def _typeset(name: str) -> str:
     return typeset_indices(name) if name[0] in "[(" else name
 
 
-def _render_along(subject: Subject, pose: Pose, numbers: list[dict[str, str]]) -> list[dict[str, Any]]:
-    estimate = subject.tensor.estimate
-    flux = compute_flux_angles(pose.matrix, compute_flux(estimate.matrix, pose.matrix))
-    rods, rod_sigmas = compute_rod_values(estimate.matrix, pose.matrix), estimate.rod_sigma(pose.matrix)
-    rows = []
-    for axis in range(3):
-        rod = None
-        if subject.other is not None and np.isfinite(rods[axis]):
-            rod = render_number(float(rods[axis]), None if rod_sigmas is None else float(rod_sigmas[axis]))
-        angle = f"{flux[axis]:.1f}°" if np.isfinite(flux[axis]) else "–"
-        rows.append({"axis": "xyz"[axis], "value": numbers[axis], "rod": rod, "flux": angle})
-    return rows
-
-
-def _render_ruler(subject: Subject, values: FloatArray) -> dict[str, Any]:
-    """A scale from the smallest to the largest value, with ticks; places are parts of its length."""
-    principal = subject.principal.values
-    spread = float(principal[0] - principal[2])
-    if spread <= 1e-9 * float(np.max(np.abs(principal))):
-        spread = max(abs(float(principal[0])), 1e-300)
-    low, high = float(principal[2]) - 0.04 * spread, float(principal[0]) + 0.04 * spread
-
-    def place(value: float) -> float:
-        return round((value - low) / (high - low), 4)
-
-    levels = choose_levels(low, high, 30)
-    ticks = [
-        {"at": place(float(value)), "text": f"{value:.6g}".replace("-", "−") if heavy else ""}
-        for value, heavy in zip(levels.values, levels.heavy, strict=True)
+def _render_along(subject: Subject, pose: Pose, along: list[Along]) -> list[dict[str, Any]]:
+    matrix = subject.tensor.estimate.matrix
+    flux = compute_flux_angles(pose.matrix, compute_flux(matrix, pose.matrix))
+    return [
+        {
+            "axis": letter,
+            "value": _part_number(printed.value),
+            "rod": None if printed.other is None else _part_number(printed.other),
+            "flux": f"{angle:.1f}°" if np.isfinite(angle) else "–",
+        }
+        for letter, printed, angle in zip(AXIS_LETTERS, along, flux.tolist(), strict=True)
     ]
-    return {
-        "ticks": ticks,
-        "principal": [
-            {"at": place(float(value)), "name": str(number + 1), "locked": subject.fixed[number]}
-            for number, value in enumerate(principal)
-        ],
-        "axes": [{"at": place(float(value)), "name": "xyz"[axis]} for axis, value in enumerate(values)],
-    }
 
 
 def _say_where(pose: Pose, kept: dict[str, Any], places: list[Place]) -> str:

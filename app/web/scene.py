@@ -9,7 +9,7 @@ from __future__ import annotations
 
 import json
 from dataclasses import dataclass
-from functools import cached_property, lru_cache
+from functools import cached_property
 from typing import Any, Final, Literal
 
 import numpy as np
@@ -98,10 +98,15 @@ class Subject:
             return []
         return [(kind, curve) for kind, curve in zip(region.kinds, region.curves, strict=True) if len(curve) > 1]
 
-    @lru_cache(maxsize=3)  # noqa: B019 - subjects live in a bounded cache of their own
+    @cached_property
+    def _scenes(self) -> dict[SurfaceKind, Scene]:
+        return {}
+
     def scene(self, kind: SurfaceKind) -> Scene:
-        """The scene of one of the three surfaces."""
-        return build_scene(self, kind)
+        """The scene of one of the three surfaces, made when it is first asked for."""
+        if kind not in self._scenes:
+            self._scenes[kind] = build_scene(self, kind)
+        return self._scenes[kind]
 
 
 @dataclass(frozen=True, eq=False)
@@ -128,6 +133,16 @@ class Scene:
     lines: tuple[SurfaceLine, ...]
     heavy: tuple[bool, ...]
 
+    @cached_property
+    def normals(self) -> FloatArray:
+        """Outward normals at the vertices of the mesh, shape (n, 3), of no particular length."""
+        corners = (self.surface.vertices * self.factor)[self.surface.triangles]
+        faces = np.cross(corners[:, 1] - corners[:, 0], corners[:, 2] - corners[:, 0])
+        normals = np.zeros_like(self.surface.vertices)
+        for corner in range(3):
+            np.add.at(normals, self.surface.triangles[:, corner], faces)
+        return normals
+
     def radius(self, directions: FloatArray) -> FloatArray:
         """World radius along unit vectors (..., 3); NaN where there is no surface."""
         if self.kind == "flux":
@@ -145,25 +160,37 @@ class Scene:
         """Whether the surface stands between each world point (n, 3) and a viewer far away along ``toward``."""
         if len(self.surface.vertices) == 0:
             return np.zeros(len(points), dtype=bool)
+        # A ray meets the surface where a number changes its sign on the way: its least and largest values tell.
         span = np.linspace(0.012, 2.0 * self.reach, steps)
-        along = points[:, None, :] + span[None, :, None] * toward
-        if self.kind == "flux":
-            sizes = np.linalg.norm(along, axis=-1)
-            outside = sizes * sizes - self.factor * np.linalg.norm(along @ self.matrix.T, axis=-1)
-            return np.asarray(np.any(np.sign(outside[:, 1:]) != np.sign(outside[:, :-1]), axis=1))
-        values = np.einsum("nti,nti->nt", along @ self.matrix, along)
+        if self.kind == "quadric":
+            values = _follow_form(self.matrix / self.factor**2, points, toward, span)
+            if self.cut is None:
+                low, high = np.min(values, axis=0), np.max(values, axis=0)
+            else:
+                # What is inside the cut is one stretch of each ray.
+                inside = _follow_form(np.eye(3), points, toward, span) <= self.cut**2
+                low = np.min(values, axis=0, initial=np.inf, where=inside)
+                high = np.max(values, axis=0, initial=-np.inf, where=inside)
+            crossed = (np.sign(low - 1.0) != np.sign(high - 1.0)) | (np.sign(low + 1.0) != np.sign(high + 1.0))
+            return np.asarray(crossed & (low <= high))
+        squares = np.maximum(_follow_form(np.eye(3), points, toward, span), 0.0)
+        scaled = self.matrix * self.factor
         if self.kind == "value":
-            sizes = np.linalg.norm(along, axis=-1)
-            outside = sizes**3 - self.factor * np.abs(values)
-            return np.asarray(np.any(np.sign(outside[:, 1:]) != np.sign(outside[:, :-1]), axis=1))
-        values = values / self.factor**2
-        crossed = (np.sign(values[:, 1:] - 1) != np.sign(values[:, :-1] - 1)) | (
-            np.sign(values[:, 1:] + 1) != np.sign(values[:, :-1] + 1)
-        )
-        if self.cut is not None:
-            near = np.linalg.norm(along, axis=-1) <= self.cut
-            crossed &= near[:, 1:] & near[:, :-1]
-        return np.asarray(np.any(crossed, axis=1))
+            outside = squares * np.sqrt(squares) - np.abs(_follow_form(scaled, points, toward, span))
+        else:
+            effects = _follow_form(scaled.T @ scaled, points, toward, span)
+            outside = squares - np.sqrt(np.maximum(effects, 0.0))
+        return np.asarray(np.sign(np.min(outside, axis=0)) != np.sign(np.max(outside, axis=0)))
+
+
+def _follow_form(matrix: FloatArray, points: FloatArray, toward: FloatArray, span: FloatArray) -> FloatArray:
+    """xᵀAx along the rays x = p + t d from points (n, 3), at every t of the span (k,); shape (k, n)."""
+    start = np.einsum("ni,ni->n", points @ matrix, points)
+    slope = points @ ((matrix + matrix.T) @ toward)
+    values: FloatArray = span[:, None] * slope
+    values += start
+    values += (toward @ matrix @ toward * span * span)[:, None]
+    return values
 
 
 def build_scene(subject: Subject, kind: SurfaceKind) -> Scene:

@@ -17,7 +17,7 @@ from scipy.spatial.transform import Rotation
 
 from app.crystal.crystal import Crystal
 from app.crystal.direction import format_indices, read_direction
-from app.crystal.lattice import compute_directions, list_indices
+from app.crystal.lattice import list_directions, list_indices
 from app.errors import InputError, located
 from app.tensor.pose import AXIS_LETTERS, Pose, pose_from_axes, pose_from_matrix
 from app.tensor.principal import Principal
@@ -30,6 +30,7 @@ CATCH_WITHIN: Final = 2.0
 CATCH_DEAD: Final = 0.7
 """Degrees within which it lies on it."""
 CATCH_INDEX: Final = 2
+_CATCH_KINDS: Final = ("normal", "row")
 
 DEFAULT_VIEW: Final = np.array([[-0.8090, 0.5878, 0.0], [-0.2249, -0.3095, 0.9239], [0.5430, 0.7474, 0.3827]])
 
@@ -145,9 +146,9 @@ def catch(
     Returns:
         The pose, and what lies exactly on what.
     """
-    vectors, names = _list_catches(crystal, principal)
+    lines = _list_lines(crystal, principal)
     # Both senses of every line, so that what is caught is called by the sense in which the axis points.
-    vectors = np.concatenate([vectors, -vectors])
+    vectors = np.concatenate([lines, -lines])
     if about is None:
         target = _find_target(pose[2], vectors)
         if target is None:
@@ -157,27 +158,22 @@ def catch(
         across = np.cross(pose[2], goal)
         size = float(np.linalg.norm(across))
         if size < 1e-12:
-            return pose, Caught("z", names[index])
+            return pose, Caught("z", _name_line(principal, index, len(lines)))
         turn = Rotation.from_rotvec(np.deg2rad(off - pulled) * across / size).as_matrix()
         caught = pose @ turn.T
-        if pulled == 0.0:
-            caught = pose_from_axes(2, goal, 0, caught[0]).matrix
-        return caught, Caught("z", names[index]) if pulled == 0.0 else None
-    best: tuple[float, int, int] | None = None
-    for axis in ((about + 1) % 3, (about + 2) % 3):
-        flat = vectors - np.outer(vectors @ pose[about], pose[about])
-        inside = np.abs(vectors @ pose[about]) < np.sin(np.deg2rad(0.5))
-        for index in np.flatnonzero(inside).tolist():
-            across = flat[index]
-            angle = float(np.rad2deg(np.arctan2(np.cross(pose[axis], across) @ pose[about], pose[axis] @ across)))
-            if abs(angle) <= CATCH_WITHIN and (best is None or abs(angle) < abs(best[0])):
-                best = (angle, axis, int(index))
-    if best is None:
+        if pulled > 0.0:
+            return caught, None
+        caught = pose_from_axes(2, goal, 0, caught[0]).matrix
+        return caught, Caught("z", _name_line(principal, index, len(lines)))
+    near = _find_turn(pose, about, vectors)
+    if near is None:
         return pose, None
-    angle, axis, index = best
+    index, axis, angle = near
     pulled = _pull(abs(angle))
     turned = spin(pose, about, float(np.sign(angle)) * (abs(angle) - pulled))
-    return turned, Caught(AXIS_LETTERS[axis], names[index]) if pulled == 0.0 else None
+    if pulled > 0.0:
+        return turned, None
+    return turned, Caught(AXIS_LETTERS[axis], _name_line(principal, index, len(lines)))
 
 
 def _pull(off: float) -> float:
@@ -186,28 +182,55 @@ def _pull(off: float) -> float:
 
 
 def _find_target(vector: FloatArray, vectors: FloatArray) -> tuple[int, FloatArray, float] | None:
-    if len(vectors) == 0:
+    """The nearest of unit vectors (n, 3) within reach: its number, itself and how many degrees off it is."""
+    cosines = vectors @ vector
+    # A little more than is within reach is kept by the cosine, which has no digits left at small angles.
+    near = np.flatnonzero(cosines >= np.cos(np.deg2rad(CATCH_WITHIN)) - 1e-9)
+    if len(near) == 0:
         return None
-    across = np.linalg.norm(np.cross(vectors, vector), axis=1)
-    angles = np.rad2deg(np.arctan2(across, vectors @ vector))
-    index = int(np.argmin(angles))
-    if angles[index] > CATCH_WITHIN:
+    across = np.linalg.norm(np.cross(vectors[near], vector), axis=1)
+    angles = np.rad2deg(np.arctan2(across, cosines[near]))
+    best = int(np.argmin(angles))
+    if angles[best] > CATCH_WITHIN:
         return None
-    return index, vectors[index], float(angles[index])
+    return int(near[best]), vectors[near[best]], float(angles[best])
 
 
-def _list_catches(crystal: Crystal, principal: Principal) -> tuple[FloatArray, list[str]]:
-    """Unit vectors, one per line, and their names in both senses: first as they are, then reversed."""
-    parts = [principal.axes[index][None] for index in range(3) if not principal.arbitrary[index]]
-    names = [f"p{index + 1}" for index in range(3) if not principal.arbitrary[index]]
-    opposite = [f"−{name}" for name in names]
+def _find_turn(pose: FloatArray, about: int, vectors: FloatArray) -> tuple[int, int, float] | None:
+    """The shortest turn within reach about one axis that puts another on one of unit vectors (n, 3) across the first.
+
+    The vector's number, the axis that comes to lie on it and the degrees, right-handed about the first.
+    """
+    along = vectors @ pose[about]
+    near = np.flatnonzero(np.abs(along) < np.sin(np.deg2rad(0.5)))
+    flat = vectors[near] - np.outer(along[near], pose[about])
+    best: tuple[int, int, float] | None = None
+    for axis in ((about + 1) % 3, (about + 2) % 3):
+        angles = np.rad2deg(np.arctan2(flat @ np.cross(pose[about], pose[axis]), flat @ pose[axis]))
+        for place in np.flatnonzero(np.abs(angles) <= CATCH_WITHIN).tolist():
+            angle = float(angles[place])
+            if best is None or abs(angle) < abs(best[2]):
+                best = (int(near[place]), axis, angle)
+    return best
+
+
+def _list_lines(crystal: Crystal, principal: Principal) -> FloatArray:
+    """Unit vectors, one of each line that draws: principal axes that there are, then normals, then rows."""
+    parts = [principal.axes[[index for index in range(3) if not principal.arbitrary[index]]]]
     if crystal.M is not None:
-        indices = list_indices(CATCH_INDEX)
-        for kind in ("normal", "row"):
-            parts.append(compute_directions(crystal, kind, indices))
-            names += [format_indices(kind, row) for row in indices.tolist()]
-            opposite += [format_indices(kind, row) for row in (-indices).tolist()]
-    return (np.concatenate(parts) if parts else np.zeros((0, 3))), names + opposite
+        parts += [list_directions(crystal, kind, CATCH_INDEX) for kind in _CATCH_KINDS]
+    return np.concatenate(parts)
+
+
+def _name_line(principal: Principal, index: int, count: int) -> str:
+    """The name of an entry of ``_list_lines``, of which there are ``count``; from there on, of the reversed ones."""
+    sense, index = (1, index) if index < count else (-1, index - count)
+    axes = [f"p{number + 1}" for number in range(3) if not principal.arbitrary[number]]
+    if index < len(axes):
+        return axes[index] if sense > 0 else f"−{axes[index]}"
+    indices = list_indices(CATCH_INDEX)
+    kind, number = divmod(index - len(axes), len(indices))
+    return format_indices(_CATCH_KINDS[kind], (sense * indices[number]).tolist())
 
 
 def put_axis(crystal: Crystal, pose: FloatArray, axis: str, on: str, toward: tuple[str, str] | None) -> dict[str, Any]:
