@@ -6,7 +6,7 @@ Everything later works in the crystal frame x1 x2 x3 of this object. Basis vecto
 from __future__ import annotations
 
 from dataclasses import dataclass
-from functools import cached_property
+from functools import cached_property, lru_cache
 from typing import Final
 
 import numpy as np
@@ -77,10 +77,11 @@ class Crystal:
         """Volume of the obeying cell in cubic angstrom."""
         return None if self.cell is None else self.cell.volume
 
-    @property
+    @cached_property
     def reciprocal(self) -> FloatArray:
         """a*, b*, c* in the crystal frame as columns, shape (3, 3), inverse angstrom (without 2π)."""
         inverse = np.asarray(np.linalg.inv(self.require_basis()), dtype=np.float64)
+        inverse.setflags(write=False)
         return inverse.T
 
     def require_basis(self) -> FloatArray:
@@ -143,6 +144,43 @@ def build_crystal(
         InputError: with the field that is wrong. A cell that the group does not leave unchanged is refused with the
             nearest obeying cell and the change of each parameter in ``detail``.
     """
+    if _are_plain(cell) and _are_plain(cell_sigma):
+        # A session asks about few crystals many times.
+        return _build_kept(
+            None if cell is None else tuple(cell),  # type: ignore[arg-type]
+            group,
+            unique_axis,
+            frame,
+            None if cell_sigma is None else tuple(cell_sigma),  # type: ignore[arg-type]
+        )
+    return _build(cell, group, unique_axis, frame, cell_sigma)
+
+
+def _are_plain(numbers: npt.ArrayLike | None) -> bool:
+    """Whether these are plain numbers, which alone may serve as a key: True is 1 there, and arrays cannot be one."""
+    return numbers is None or (
+        isinstance(numbers, list | tuple) and all(type(number) in (float, int) for number in numbers)
+    )
+
+
+@lru_cache(maxsize=128)
+def _build_kept(
+    cell: tuple[float, ...] | None,
+    group: str,
+    unique_axis: str | None,
+    frame: str | None,
+    cell_sigma: tuple[float, ...] | None,
+) -> Crystal:
+    return _build(cell, group, unique_axis, frame, cell_sigma)
+
+
+def _build(
+    cell: npt.ArrayLike | None,
+    group: str,
+    unique_axis: str | None,
+    frame: str | None,
+    cell_sigma: npt.ArrayLike | None,
+) -> Crystal:
     given = None if cell is None else build_cell(cell, cell_sigma)
     point_group = find_group(group, unique_axis, rhombohedral_cell=given is not None and _is_rhombohedral(given))
     if point_group.limiting:
@@ -166,6 +204,7 @@ def build_crystal(
     obeying = _make_obey(given, point_group)
     rule = parse_frame_rule(frame)
     basis = compute_basis(obeying.metric, rule)
+    basis.setflags(write=False)
     rotations = _compute_rotations(basis, point_group.operations)
     crystal = Crystal(point_group, obeying, given, rule, basis, rotations)
     if rule.uses_four_indices:

@@ -18,6 +18,9 @@ IntArray = npt.NDArray[np.int64]
 TIE: Final = 1e-7
 """Angles in degrees that differ by less are equal, and the simpler index wins."""
 
+TIE_COSINE: Final = 1e-6
+"""Cosines further apart than this belong to angles further apart than TIE."""
+
 
 @dataclass(frozen=True)
 class NearDirection:
@@ -91,11 +94,27 @@ def find_nearest(
 
     Its index form points the way that ``direction`` does.
     """
+    return find_all_nearest(crystal, direction[None], kind, max_index)[0]
+
+
+def find_all_nearest(
+    crystal: Crystal, directions: FloatArray, kind: Literal["row", "normal"], max_index: int = 5
+) -> list[NearDirection]:
+    """``find_nearest`` for each of unit vectors (m, 3)."""
     indices = list_indices(max_index)
     vectors = list_directions(crystal, kind, max_index)
-    cosines = vectors @ direction
-    across = np.linalg.norm(np.cross(vectors, direction), axis=-1)
-    angles = np.rad2deg(np.arctan2(across, np.abs(cosines)))
-    best = int(np.argmax(angles <= float(np.min(angles)) + TIE))
-    sense = -1 if cosines[best] < -1e-12 else 1
-    return NearDirection(format_indices(kind, (sense * indices[best]).tolist()), float(angles[best]))
+    cosines = directions @ vectors.T
+    sizes = np.abs(cosines)
+    found = []
+    for direction, along, size in zip(directions, cosines, sizes, strict=True):
+        # More than can tie is kept by the cosine, which has no digits left at small angles.
+        near = np.flatnonzero(size >= np.max(size) - TIE_COSINE)
+        same = vectors[near] * np.where(along[near] < 0.0, -1.0, 1.0)[:, None]
+        # Twice the angle whose tangent is the difference over the sum: digits are kept at every angle (W. Kahan).
+        apart, together = np.linalg.norm(same - direction, axis=1), np.linalg.norm(same + direction, axis=1)
+        angles = np.rad2deg(2.0 * np.arctan2(apart, together))
+        first = int(np.argmax(angles <= float(np.min(angles)) + TIE))
+        best = int(near[first])
+        sense = -1 if along[best] < -1e-12 else 1
+        found.append(NearDirection(format_indices(kind, (sense * indices[best]).tolist()), float(angles[first])))
+    return found

@@ -121,32 +121,43 @@ def fit_readings(
     Raises:
         InputError: a reading that is wrong in itself, or readings that no tensor can give.
     """
-    form = build_form(crystal, kind)
     taken = resolve_readings(crystal, kind, readings, batches=batches, pose=pose)
+    return fit_reading_set(crystal, kind, taken, unit=unit)
+
+
+def fit_reading_set(crystal: Crystal, kind: Kind, taken: ReadingSet, *, unit: str | None = None) -> Fit:
+    """Fit the allowed tensor of a crystal to readings that are laid out already; otherwise as ``fit_readings``."""
+    form = build_form(crystal, kind)
     basis = form.orthonormal.reshape(form.count, 9)
     first_weights = 1.0 if taken.sigma is None else 1.0 / taken.sigma
-    start_rows = isotropic_rows(taken)
-    start_design = start_rows @ basis.T
+    linear = linear_rows(taken)
+    start_design = isotropic_rows(taken, linear) @ _columns(basis)
     start = solve_least_squares(
         (start_design.T * first_weights).T, taken.values * first_weights, unweighted=start_design
     )
     if start.rank < form.count:
         return _report_undetermined(crystal, form, start)
-    coordinates, whitening, solution, settled = _iterate(taken, basis, start.solution)
+    coordinates, whitening, solution, settled = _iterate(taken, basis, start.solution, linear)
     if solution.rank < form.count:
         return _report_undetermined(crystal, form, solution)
-    return _report(crystal, form, taken, coordinates, whitening, solution, unit, settled)
+    return _report(crystal, form, taken, linear, coordinates, whitening, solution, unit, settled)
 
 
-def _iterate(taken: ReadingSet, basis: FloatArray, start: FloatArray) -> tuple[FloatArray, Whitening, Solution, bool]:
+def _columns(basis: FloatArray) -> FloatArray:
+    """The basis (k, 9) as columns, laid out so that a product of many rows with it is fast."""
+    return np.ascontiguousarray(basis.T)
+
+
+def _iterate(
+    taken: ReadingSet, basis: FloatArray, start: FloatArray, linear: FloatArray
+) -> tuple[FloatArray, Whitening, Solution, bool]:
     """Repeat the solution at the current estimate until the step vanishes."""
-    linear = linear_rows(taken)
-    coordinates = _choose_start(taken, basis, start)
+    coordinates, columns = _choose_start(taken, basis, start), _columns(basis)
     for _ in range(MAX_STEPS):
         matrix = (coordinates @ basis).reshape(3, 3)
         prediction = predict(taken, matrix, linear)
         whitening = build_whitening(taken, matrix, prediction.values)
-        design = prediction.rows @ basis.T
+        design = prediction.rows @ columns
         residual = whitening.whiten(taken.values - prediction.values)
         solution = solve_least_squares(whitening.whiten(design), residual, unweighted=design)
         step = solution.solution
@@ -208,6 +219,7 @@ def _report(
     crystal: Crystal,
     form: Form,
     taken: ReadingSet,
+    linear: FloatArray,
     coordinates: FloatArray,
     whitening: Whitening,
     solution: Solution,
@@ -216,7 +228,8 @@ def _report(
 ) -> Fit:
     basis = form.orthonormal.reshape(form.count, 9)
     matrix = (coordinates @ basis).reshape(3, 3)
-    prediction = predict(taken, matrix)
+    prediction = predict(taken, matrix, linear)
+    design = prediction.rows @ _columns(basis)
     residual = taken.values - prediction.values
     whitened = whitening.whiten(residual)
     chi2, dof = float(whitened @ whitened), len(taken) - form.count
@@ -257,7 +270,7 @@ def _report(
         p_value=float(chdtrc(dof, chi2)) if taken.sigma is not None and dof > 0 else None,
         scale=scale,
         covariance_from=covariance_from,
-        readings=_judge_readings(prediction.rows @ basis.T, prediction.values, residual, whitening, solution, variance),
+        readings=_judge_readings(design, prediction.values, residual, whitening, solution, variance),
         principal=find_principal(estimate),
         symmetry_test=test_symmetry(crystal, form, taken, coordinates, whitening),
         notes=tuple(notes),

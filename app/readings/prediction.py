@@ -17,6 +17,7 @@ import numpy as np
 import numpy.typing as npt
 
 from app.errors import InputError
+from app.readings.reading import ReadingKind
 from app.readings.reading_set import ReadingSet
 
 FloatArray = npt.NDArray[np.float64]
@@ -39,26 +40,42 @@ def _outer(first: FloatArray, second: FloatArray) -> FloatArray:
     return (first[:, :, None] * second[:, None, :]).reshape(-1, 9)
 
 
+def _places(readings: ReadingSet, name: ReadingKind) -> slice | npt.NDArray[np.intp] | None:
+    """Where readings of a kind stand: everywhere, somewhere or (None) nowhere; a slice copies nothing."""
+    inside = readings.where(name)
+    if np.all(inside):
+        return slice(None)
+    return np.flatnonzero(inside) if np.any(inside) else None
+
+
 def linear_rows(readings: ReadingSet) -> FloatArray:
     """Derivatives (N, 9) of the linear kinds, mean shift included; zero for rods and sheets."""
     rows = np.zeros((len(readings), 9))
     n, m = readings.first, readings.second
-    along, across = readings.where("along"), readings.where("across")
-    difference, mean = readings.where("difference"), readings.where("mean")
     identity = np.eye(3).ravel()
     turn2 = np.square(readings.turn_sigma)[:, None]
-    rows[along] = _outer(n[along], n[along])
-    rows[along] += turn2[along] * (identity - 3.0 * rows[along])
-    rows[across] = _outer(m[across], n[across])
-    rows[difference] = _outer(n[difference], n[difference]) - _outer(m[difference], m[difference])
-    rows[difference] *= 1.0 - 3.0 * turn2[difference]
-    rows[mean] = identity / 3.0
+    tilted = bool(np.any(turn2))
+    if (along := _places(readings, "along")) is not None:
+        outer = _outer(n[along], n[along])
+        rows[along] = outer + turn2[along] * (identity - 3.0 * outer) if tilted else outer
+    if (across := _places(readings, "across")) is not None:
+        rows[across] = _outer(m[across], n[across])
+    if (difference := _places(readings, "difference")) is not None:
+        outer = _outer(n[difference], n[difference]) - _outer(m[difference], m[difference])
+        rows[difference] = outer * (1.0 - 3.0 * turn2[difference])
+    if (mean := _places(readings, "mean")) is not None:
+        rows[mean] = identity / 3.0
     return rows
 
 
-def isotropic_rows(readings: ReadingSet) -> FloatArray:
-    """Derivatives (N, 9) at an isotropic tensor: a rod reads the value along it, a sheet the mean of the two across."""
-    rows = linear_rows(readings)
+def isotropic_rows(readings: ReadingSet, linear: FloatArray) -> FloatArray:
+    """Derivatives (N, 9) at an isotropic tensor: a rod reads the value along it, a sheet the mean of the two across.
+
+    ``linear`` is ``linear_rows`` of the same readings.
+    """
+    if not readings.has("rod", "sheet"):
+        return linear
+    rows = linear.copy()
     rod, sheet = readings.where("rod"), readings.where("sheet")
     rows[rod] = _outer(readings.first[rod], readings.first[rod])
     rows[sheet] = (np.eye(3).ravel() - _outer(readings.second[sheet], readings.second[sheet])) / 2.0

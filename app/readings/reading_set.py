@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from operator import attrgetter
 
 import numpy as np
 import numpy.typing as npt
@@ -12,7 +14,7 @@ from app.crystal.crystal import Crystal
 from app.errors import InputError, located
 from app.readings.reading import NEEDS_DIRECTION, NEEDS_SECOND, READING_KINDS, Reading, ReadingKind
 from app.tensor.kind import Kind
-from app.tensor.pose import Pose, resolve_direction
+from app.tensor.pose import Pose, resolve_direction, resolve_directions
 
 FloatArray = npt.NDArray[np.float64]
 IntArray = npt.NDArray[np.int64]
@@ -83,37 +85,56 @@ def resolve_readings(
         InputError: with the field of the first reading that is wrong, like ``readings[3].sigma``.
     """
     known = _check_batches(batches or {})
-    names = list(known)
-    count = len(readings)
-    first, second = np.zeros((count, 3)), np.zeros((count, 3))
-    values = np.full(count, np.nan)
-    batch_numbers = np.full(count, -1, dtype=np.int64)
-    for index, reading in enumerate(readings):
-        with located(f"readings[{index}]"):
-            _check_reading(reading, kind, known, values_required)
-            frame = reading.pose or pose
-            if reading.direction is not None:
-                with located("direction"):
-                    first[index] = resolve_direction(crystal, reading.direction, frame)
-            if reading.second is not None:
-                with located("second"):
-                    second[index] = resolve_direction(crystal, reading.second, frame)
-        if reading.value is not None:
-            values[index] = reading.value
-        if reading.batch is not None:
-            batch_numbers[index] = names.index(reading.batch)
+    try:
+        first, second = _resolve_all(crystal, kind, readings, known, pose, values_required)
+    except InputError:
+        # Whatever is wrong is told of the first reading that has a fault, at its field.
+        for index, reading in enumerate(readings):
+            with located(f"readings[{index}]"):
+                _check_reading(reading, kind, known, values_required)
+                for field, given in (("direction", reading.direction), ("second", reading.second)):
+                    if given is not None:
+                        with located(field):
+                            resolve_direction(crystal, given, reading.pose or pose)
+        raise
+    numbers = {name: number for number, name in enumerate(known)}
     bars, turn_sigma = _collect_bars(readings)
     return ReadingSet(
         kinds=np.array([READING_KINDS.index(reading.kind) for reading in readings], dtype=np.int64),
         first=first,
         second=second,
-        values=values,
+        values=np.array([np.nan if reading.value is None else reading.value for reading in readings], dtype=np.float64),
         sigma=_collect_sigma(readings),
         turn_sigma=turn_sigma,
         bars=bars,
-        batches=batch_numbers,
+        batches=np.array(
+            [-1 if reading.batch is None else numbers[reading.batch] for reading in readings], dtype=np.int64
+        ),
         batch_sigma=np.array(list(known.values()), dtype=np.float64),
     )
+
+
+def _resolve_all(
+    crystal: Crystal,
+    kind: Kind,
+    readings: Sequence[Reading],
+    batches: Mapping[str, float],
+    pose: Pose,
+    values_required: bool,
+) -> tuple[FloatArray, FloatArray]:
+    """Check every reading, and the unit vectors (N, 3) of their directions and second directions."""
+    poses: dict[int, tuple[Pose, list[int]]] = {}
+    for index, reading in enumerate(readings):
+        _check_reading(reading, kind, batches, values_required)
+        frame = reading.pose or pose
+        poses.setdefault(id(frame), (frame, []))[1].append(index)
+    found = np.zeros((2, len(readings), 3))
+    for frame, members in poses.values():
+        for vectors, of in zip(found, (attrgetter("direction"), attrgetter("second")), strict=True):
+            places = [index for index in members if of(readings[index]) is not None]
+            if places:
+                vectors[places] = resolve_directions(crystal, [of(readings[index]) for index in places], frame)
+    return found[0], found[1]
 
 
 def _check_batches(batches: Mapping[str, float]) -> dict[str, float]:
@@ -154,7 +175,7 @@ def _check_reading(reading: Reading, kind: Kind, batches: Mapping[str, float], v
     if reading.value is None:
         if values_required:
             raise InputError("The reading has no value.", field="value")
-    elif not np.isfinite(reading.value):
+    elif not math.isfinite(reading.value):
         raise InputError("The value is not a finite number.", field="value")
     elif name in ("rod", "sheet") and reading.value <= 0:
         raise InputError(
@@ -162,7 +183,7 @@ def _check_reading(reading: Reading, kind: Kind, batches: Mapping[str, float], v
             field="value",
             hint="Correct the value or the kind.",
         )
-    if reading.sigma is not None and not (np.isfinite(reading.sigma) and reading.sigma > 0):
+    if reading.sigma is not None and not (math.isfinite(reading.sigma) and reading.sigma > 0):
         raise InputError(f"The standard deviation is {reading.sigma:g}; it must be positive.", field="sigma")
     turn = reading.direction_sigma
     if turn is not None and not 0 <= turn <= MAX_DIRECTION_SIGMA:

@@ -21,6 +21,9 @@ FloatArray = npt.NDArray[np.float64]
 RANK_TOLERANCE: Final = 1e-6
 """A singular value below this part of the largest: rounding of the directions could decide."""
 
+LIKE_SIZE: Final = 30.0
+"""Rows whose sizes differ by less than this factor cost a digit and a half at the most when left unsorted."""
+
 
 @dataclass(frozen=True)
 class Solution:
@@ -67,8 +70,8 @@ def solve_least_squares(
             field="readings",
             hint="Look for a value or a sigma that is extremely large or small.",
         )
-    order = np.argsort(-np.max(np.abs(design), axis=1), kind="stable")
-    orthogonal, triangle, pivots = qr(design[order], mode="economic", pivoting=True)
+    design, observed = _order_rows(design, observed)
+    orthogonal, triangle, pivots = qr(design, mode="economic", pivoting=True)
     parts = np.linalg.svd(triangle)
     # The columns of the triangle are those of the design in pivoted order.
     directions = np.zeros_like(parts.Vh)
@@ -88,12 +91,21 @@ def solve_least_squares(
     if rank == unknowns:
         inverse = np.zeros((unknowns, unknowns))
         inverse[pivots] = solve_triangular(triangle, np.eye(unknowns))
-        solution = inverse @ (orthogonal.T @ observed[order])
+        solution = inverse @ (orthogonal.T @ observed)
         return Solution(solution, inverse @ inverse.T, rank, float(sizes[0] / sizes[-1]), unseen)
     kept = sizes > tolerance * sizes[0]
     weighted = directions[kept].T / sizes[kept]
-    solution = weighted @ (parts.U[:, : len(parts.S)][:, kept[: len(parts.S)]].T @ (orthogonal.T @ observed[order]))
+    solution = weighted @ (parts.U[:, : len(parts.S)][:, kept[: len(parts.S)]].T @ (orthogonal.T @ observed))
     return Solution(solution, weighted @ weighted.T, rank, np.inf, unseen)
+
+
+def _order_rows(design: FloatArray, observed: FloatArray) -> tuple[FloatArray, FloatArray]:
+    """The rows in descending order of size; as they are where they are of like size and no order gains anything."""
+    sizes = np.linalg.norm(design, axis=1)
+    if np.min(sizes) * LIKE_SIZE >= np.max(sizes):
+        return design, observed
+    order = np.argsort(-sizes, kind="stable")
+    return design[order], observed[order]
 
 
 def _find_rank(sizes: FloatArray, directions: FloatArray, tolerance: float) -> tuple[int, FloatArray]:

@@ -11,6 +11,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from functools import cached_property
 from typing import Any, Final
 
 import numpy as np
@@ -18,7 +19,7 @@ import numpy.typing as npt
 from scipy.spatial.transform import Rotation
 
 from app.crystal.crystal import Crystal
-from app.crystal.direction import read_direction
+from app.crystal.direction import Direction, read_direction
 from app.errors import InputError, located
 from app.tensor.matrix import read_matrix
 
@@ -58,7 +59,7 @@ class Pose:
         """phi1 and phi2 from 0 to below 360, PHI in 0 to 180 degrees; where PHI is 0 or 180, phi2 is 0."""
         # C = Z(φ1) X(Φ) Z(φ2) as active turns has the quaternion cos ½Φ (cos ½(φ1+φ2), sin ½(φ1+φ2)) in w and z,
         # sin ½Φ (cos ½(φ1−φ2), sin ½(φ1−φ2)) in x and y: near Φ = 0 the sum keeps its digits, near 180 the difference.
-        x, y, z, w = Rotation.from_matrix(self.matrix).as_quat()
+        x, y, z, w = self._turn
         tilt = 2.0 * float(np.arctan2(np.hypot(x, y), np.hypot(w, z)))
         half_sum, half_difference = float(np.arctan2(z, w)), float(np.arctan2(y, x))
         if np.hypot(x, y) < GIMBAL_LIMIT:
@@ -72,8 +73,26 @@ class Pose:
     @property
     def quaternion(self) -> list[float]:
         """W x y z with w not negative, of the turn that takes x1 x2 x3 onto x y z."""
-        x, y, z, w = Rotation.from_matrix(self.matrix.T).as_quat(canonical=True)
-        return [float(value) for value in (w, x, y, z)]
+        x, y, z, w = self._turn
+        # C itself, as an active turn, takes x y z onto x1 x2 x3: the other way round.
+        sign = -1.0 if w < 0 or (w == 0 and next(value for value in (x, y, z) if value) > 0) else 1.0
+        return [float(sign * value) + 0.0 for value in (w, -x, -y, -z)]
+
+    @cached_property
+    def _turn(self) -> FloatArray:
+        """C as a quaternion x y z w."""
+        turn: FloatArray = Rotation.from_matrix(self.matrix).as_quat()
+        return turn
+
+
+def turn_tensors(tensors: FloatArray, pose: FloatArray) -> FloatArray:
+    """Tensors (..., 3, 3) of the crystal frame in the specimen frame C, shape (3, 3): C T Cᵀ, for many at once.
+
+    The nine cells of each in row order go over as one row by (C ⊗ C)ᵀ, which is one matrix product for all of them.
+    """
+    rows = tensors.reshape(-1, 9)
+    turned: FloatArray = (rows @ np.ascontiguousarray(np.kron(pose, pose).T)).reshape(tensors.shape)
+    return turned
 
 
 def _wrap(angle: float) -> float:
@@ -271,19 +290,36 @@ def resolve_direction(crystal: Crystal, given: Any, pose: Pose) -> FloatArray:
 
 def resolve_directions(crystal: Crystal, given: Sequence[Any], pose: Pose) -> FloatArray:
     """Unit vectors in the crystal frame, shape (m, 3), of a list of directions; an error names the wrong one."""
-    vectors = np.zeros((len(given), 3))
-    plain = [index for index, item in enumerate(given) if type(item) is list]
-    if plain:
-        numbers = np.array([given[index] for index in plain], dtype=np.float64)
-        sizes = np.max(np.abs(numbers), axis=1)
-        if not np.all(sizes > 0):
-            index = plain[int(np.argmin(sizes > 0))]
-            raise InputError("A direction cannot be the zero vector.", field=f"[{index}]")
-        scaled = numbers / sizes[:, None]
-        vectors[plain] = scaled / np.linalg.norm(scaled, axis=1, keepdims=True)
-    if len(plain) < len(given):
-        for index, item in enumerate(given):
-            if type(item) is not list:
-                with located(f"[{index}]"):
-                    vectors[index] = resolve_direction(crystal, item, pose)
-    return vectors
+    rows: list[Sequence[float]] = []
+    bases: dict[str, FloatArray] = {}
+    places: dict[str, list[int]] = {"vector": []}
+    for index, item in enumerate(given):
+        # Three numbers are what there may be very many of; all else is read one by one.
+        if type(item) is list:
+            rows.append(item)
+            continue
+        with located(f"[{index}]"):
+            direction = read_direction(item)
+            if direction.four_index:
+                crystal.require_hexagonal(direction.text or "")
+            if direction.kind not in places:
+                places[direction.kind] = []
+                bases[direction.kind] = _find_basis(crystal, direction, pose)
+        places[direction.kind].append(index)
+        rows.append(direction.values)
+    vectors = np.array(rows, dtype=np.float64).reshape(-1, 3)
+    sizes = np.max(np.abs(vectors), axis=1, keepdims=True)
+    if not np.all(sizes > 0):
+        raise InputError("A direction cannot be the zero vector.", field=f"[{int(np.argmin(sizes > 0))}]")
+    vectors /= sizes
+    for kind, basis in bases.items():
+        vectors[places[kind]] = vectors[places[kind]] @ basis.T
+    units: FloatArray = vectors / np.linalg.norm(vectors, axis=1, keepdims=True)
+    return units
+
+
+def _find_basis(crystal: Crystal, direction: Direction, pose: Pose) -> FloatArray:
+    """What the numbers of a kind of direction multiply, as columns in the crystal frame."""
+    if direction.kind == "specimen":
+        return pose.matrix.T
+    return crystal.require_basis() if direction.kind == "row" else crystal.reciprocal

@@ -12,7 +12,7 @@ import numpy.typing as npt
 
 from app.crystal.crystal import Crystal
 from app.crystal.direction import Direction, format_indices
-from app.crystal.lattice import find_nearest
+from app.crystal.lattice import find_all_nearest
 from app.readings.fit import Fit
 from app.readings.reading import Reading
 from app.readings.unseen import Unseen
@@ -93,17 +93,15 @@ def render_principal(principal: Principal) -> dict[str, Any]:
 
 def render_nearest(crystal: Crystal, principal: Principal) -> list[dict[str, Any]]:
     """The nearest row and plane of every axis; null for an axis that is not determined or where there is no cell."""
-    return [
-        _render_near(crystal, axis, known=crystal.M is not None and not arbitrary)
-        for axis, arbitrary in zip(principal.axes, principal.arbitrary, strict=True)
+    known = [index for index in range(3) if crystal.M is not None and not principal.arbitrary[index]]
+    nearest: list[dict[str, Any]] = [
+        {"row": None, "row_off": None, "plane": None, "plane_off": None} for _ in principal.arbitrary
     ]
-
-
-def _render_near(crystal: Crystal, axis: FloatArray, *, known: bool) -> dict[str, Any]:
-    if not known:
-        return {"row": None, "row_off": None, "plane": None, "plane_off": None}
-    row, plane = find_nearest(crystal, axis, "row"), find_nearest(crystal, axis, "normal")
-    return {"row": row.text, "row_off": row.off, "plane": plane.text, "plane_off": plane.off}
+    if known:
+        rows, planes = (find_all_nearest(crystal, principal.axes[known], kind) for kind in ("row", "normal"))
+        for index, row, plane in zip(known, rows, planes, strict=True):
+            nearest[index] = {"row": row.text, "row_off": row.off, "plane": plane.text, "plane_off": plane.off}
+    return nearest
 
 
 def render_state(crystal: Crystal, tensor: PropertyTensor, pose: Pose) -> dict[str, Any]:
