@@ -20,10 +20,8 @@ POSE = {"bunge": [20.0, 40.0, 70.0]}
 @pytest.fixture(scope="module")
 def client(tmp_path_factory: pytest.TempPathFactory) -> Iterator[Client]:
     data: Path = tmp_path_factory.mktemp("bench") / "data"
-    with serve_with_floors(data) as (url, _):
-        client = Client(url)
+    with serve_with_floors(data) as (url, _), Client(url) as client:
         yield client
-        client.close()
 
 
 def test_state_by_http(beside: Beside, client: Client) -> None:

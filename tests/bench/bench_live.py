@@ -38,8 +38,9 @@ def turn_message(subject: str, pose: Any, number: int) -> str:
 
 def prepare(url: str, socket: ClientConnection) -> tuple[str, Any]:
     """The hash of the demonstration sample's tensor and its pose."""
-    sample = json.loads(Client(url).send("GET", "/api/samples"))[0]["id"]
-    document = json.loads(Client(url).send("GET", f"/api/samples/{sample}"))["document"]
+    with Client(url) as client:
+        sample = client.fetch("/api/samples")[0]["id"]
+        document = client.fetch(f"/api/samples/{sample}")["document"]
     socket.send(json.dumps({"type": "tensor", "sample": sample}))
     return json.loads(socket.recv())["hash"], document["pose"]
 
@@ -54,7 +55,8 @@ def test_turn_beside_an_echo(beside: Beside, served: tuple[str, int]) -> None:
         subject, pose = prepare(url, socket)
         socket.send(turn_message(subject, pose, 7))
         answer = socket.recv(decode=False)
-        Client(url).send("PUT", "/floor/constant/turn", bytes(answer))
+        with Client(url) as client:
+            client.send("PUT", "/floor/constant/turn", bytes(answer))
         with connect(live_address(url, "/floor/echo"), max_size=None, compression=None) as floor:
             numbers = itertools.count(8)
 
@@ -122,11 +124,9 @@ def test_eight_clients(beside: Beside, served: tuple[str, int]) -> None:
 
 def test_turn_while_a_large_simulation_runs(beside: Beside, served: tuple[str, int]) -> None:
     url, _ = served
-    sample = next(
-        entry["id"]
-        for entry in json.loads(Client(url).send("GET", "/api/samples"))
-        if json.loads(Client(url).send("GET", f"/api/samples/{entry['id']}"))["document"]["readings"]
-    )
+    with Client(url) as client:
+        samples = [entry["id"] for entry in client.fetch("/api/samples")]
+        sample = next(entry for entry in samples if client.fetch(f"/api/samples/{entry}")["document"]["readings"])
     with connect(live_address(url, "/live"), max_size=None, compression=None) as socket:
         subject, pose = prepare(url, socket)
 
@@ -149,13 +149,13 @@ def test_turn_while_a_large_simulation_runs(beside: Beside, served: tuple[str, i
         errors: list[BaseException] = []
 
         def calculate() -> None:
-            client = Client(url)
-            while not stop.is_set():
-                try:
-                    client.send("POST", f"/api/samples/{sample}/readings/closer", b"")
-                except AssertionError as error:
-                    errors.append(error)
-                    return
+            with Client(url) as client:
+                while not stop.is_set():
+                    try:
+                        client.send("POST", f"/api/samples/{sample}/readings/closer", b"")
+                    except AssertionError as error:
+                        errors.append(error)
+                        return
 
         thread = threading.Thread(target=calculate)
         thread.start()

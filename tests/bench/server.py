@@ -40,9 +40,15 @@ class Client:
         parts = urlsplit(url)
         self._connection = http.client.HTTPConnection(parts.hostname or "", parts.port or 0, timeout=60)
 
-    def close(self) -> None:
-        """End the connection."""
+    def __enter__(self) -> Client:
+        return self
+
+    def __exit__(self, *_: object) -> None:
         self._connection.close()
+
+    def fetch(self, path: str) -> Any:
+        """What a GET answers."""
+        return json.loads(self.send("GET", path))
 
     def send(self, method: str, path: str, body: bytes | None = None) -> bytes:
         """The answer's body; anything but success is an error."""
