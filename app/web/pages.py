@@ -17,6 +17,7 @@ from app.web.group_choice import list_choices
 from app.web.kept import render_entry, render_sample
 from app.web.resources import plotly_version, templates_folder
 from app.web.samples import list_samples, render_summary, store_of
+from app.web.static_files import HashedAddresses
 from app.web.typesetting import typeset
 
 router = APIRouter(include_in_schema=False)
@@ -31,6 +32,7 @@ def _with_constants(_request: Request) -> dict[str, Any]:
 
 
 templates = Jinja2Templates(directory=templates_folder(), context_processors=[_with_constants])
+templates.env.add_extension(HashedAddresses)
 templates.env.filters["typeset"] = typeset
 
 

@@ -11,6 +11,7 @@ import pytest
 from fastapi.testclient import TestClient
 
 from app.version import VERSION
+from app.web import static_files
 from app.web.resources import plotly_script
 from app.web.server import create_app
 
@@ -105,3 +106,40 @@ def test_the_openapi_document_describes_itself_and_the_errors(client: TestClient
             assert operation["responses"]["422"]["content"]["application/json"]["schema"]["$ref"].endswith(
                 "ErrorAnswer"
             )
+
+
+def test_pages_name_static_files_by_their_content(client: TestClient) -> None:
+    page = Addresses()
+    page.feed(client.get("/calls").text)
+    files = [address for address in page.found if address.startswith("/static/")]
+    assert files
+    for address in files:
+        folder, name = re.fullmatch(r"/static/([0-9a-f]{12})/(.+)", address).groups()  # type: ignore[union-attr]
+        kept = client.get(address)
+        assert "immutable" in kept.headers["Cache-Control"]
+        plain = client.get(f"/static/{name}")
+        assert plain.content == kept.content
+        # Under the address of another content it is the same file, but nobody may keep it.
+        other = client.get(f"/static/{folder[::-1]}/{name}" if folder != folder[::-1] else f"/static/{'0' * 12}/{name}")
+        assert other.content == kept.content
+        assert other.headers["Cache-Control"] == "no-cache"
+
+
+def test_the_fingerprint_is_of_every_static_file(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    (tmp_path / "inner").mkdir()
+    (tmp_path / "inner" / "a.js").write_text("one")
+    monkeypatch.setattr(static_files, "static_folder", lambda: tmp_path)
+
+    def take() -> str:
+        static_files.fingerprint.cache_clear()
+        return static_files.fingerprint()
+
+    try:
+        first = take()
+        assert take() == first
+        (tmp_path / "inner" / "a.js").write_text("two")
+        second = take()
+        (tmp_path / "inner" / "a.js").rename(tmp_path / "inner" / "b.js")
+        assert len({first, second, take()}) == 3
+    finally:
+        static_files.fingerprint.cache_clear()
