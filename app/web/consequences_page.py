@@ -13,6 +13,7 @@ from app.crystal.crystal import Crystal
 from app.crystal.direction import read_direction
 from app.errors import InputError, located
 from app.store.document import SampleDocument, current_property
+from app.tensor.estimate import Estimate
 from app.tensor.pose import Pose, resolve_direction
 from app.web import responses
 from app.web.answers import JsonAnswer
@@ -41,6 +42,8 @@ class ConsequencesRequest(Part):
     start: Number = Field(293.0, description="K")
     end: Number = Field(393.0, description="K")
     substrate: Number | None = Field(None, description="its expansion, 10⁻⁶/K")
+    flux_density: Number = Field(1.0, ge=0, le=1e3, description="of the magnetic field outside, T")
+    index: Number = Field(1.5, gt=0, le=100, description="mean refractive index of the two waves")
 
 
 @router.post("/{sample_id}/consequences", summary="What the tensor means for a part, by the kind of property")
@@ -86,7 +89,20 @@ def _read(crystal: Crystal, document: SampleDocument, given: ConsequencesRequest
         given.substrate,
         size,
         pose.matrix,
+        given.flux_density,
+        given.index,
+        _find_conductivity(crystal, document),
     ), given.direction or "z of the specimen"
+
+
+def _find_conductivity(crystal: Crystal, document: SampleDocument) -> Estimate | None:
+    """The sample's thermal conductivity, which a bar of a thermoelectric crystal needs; its unit does not matter."""
+    for kept in document.properties:
+        entry = entry_of(kept)
+        if entry.key in ("thermal_conductivity", "thermal_resistivity"):
+            estimate = tensor_of(crystal, kept).estimate
+            return estimate if entry.key == "thermal_conductivity" else estimate.invert()
+    return None
 
 
 def _resolve(crystal: Crystal, text: str, pose: Pose, field: str) -> FloatArray:

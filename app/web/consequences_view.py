@@ -9,7 +9,7 @@ import numpy as np
 import numpy.typing as npt
 
 from app.catalogue.property import Property
-from app.consequences.conduction import Like, compute_conduction, follow_flow, respond
+from app.consequences.conduction import Like, Response, compute_conduction, follow_flow, respond
 from app.consequences.indicatrix import build_indicatrix
 from app.consequences.mismatch import build_isotropic, compare_with_substrate
 from app.consequences.optic_axes import find_optic_axes
@@ -22,6 +22,14 @@ from app.tensor.estimate import Estimate
 from app.tensor.principal import find_principal
 from app.tensor.printing import print_value
 from app.tensor.sentence import place_direction
+from app.web.consequence_tables import build_table, print_degrees, print_with
+from app.web.field_consequences import (
+    Fields,
+    describe_gyration,
+    describe_magnetism,
+    describe_thermopower,
+    read_factor,
+)
 
 FloatArray = npt.NDArray[np.float64]
 
@@ -39,6 +47,9 @@ class Asked:
         wavelength: nm.
         start, end: temperatures, K.
         substrate: expansion of the substrate, 10⁻⁶/K; None for none.
+        flux_density: of a magnetic field, T.
+        index: mean refractive index.
+        conductivity: the sample's thermal conductivity, crystal frame; None where it has none.
         size: of the part along x, y, z, mm; ``axes`` are these three, as rows, crystal frame.
     """
 
@@ -51,10 +62,31 @@ class Asked:
     substrate: float | None
     size: tuple[float, float, float]
     axes: FloatArray
+    flux_density: float = 1.0
+    index: float = 1.5
+    conductivity: Estimate | None = None
+
+    @property
+    def fields(self) -> Fields:
+        """What the panels of fields need of it."""
+        return Fields(
+            self.direction,
+            self.edge,
+            self.flux_density,
+            self.start,
+            self.wavelength,
+            self.index,
+            self.conductivity,
+        )
+
+
+_OF_FIELDS: Final = {"magnetic_susceptibility": "magnetism", "thermopower": "thermopower", "gyration": "gyration"}
 
 
 def choose_panel(entry: Property) -> str:
-    """Which panel a property has: "conduction", "optics", "expansion" or "response"."""
+    """Which panel a property has: "conduction", "optics", "expansion", one named after a field, or "response"."""
+    if entry.key in _OF_FIELDS:
+        return _OF_FIELDS[entry.key]
     if entry.key in ("permittivity", "impermeability"):
         return "optics"
     if entry.key == "thermal_expansion":
@@ -78,21 +110,20 @@ def describe_consequences(
         return _describe_optics(crystal, estimate, entry, asked)
     if panel == "expansion":
         return _describe_expansion(crystal, estimate, unit, asked)
+    if panel == "magnetism":
+        return describe_magnetism(crystal, estimate, read_factor(unit), asked.fields)
+    if panel == "thermopower":
+        tables = describe_thermopower(crystal, estimate, unit, asked.fields)
+        return [*tables, *_describe_response(crystal, estimate, unit, asked)]
+    if panel == "gyration":
+        return describe_gyration(crystal, estimate, read_factor(unit), asked.fields)
     if panel == "conduction":
         return _describe_conduction(crystal, estimate, entry, unit, asked)
     return _describe_response(crystal, estimate, unit, asked)
 
 
-def _print(value: float, sigma: float | None) -> str:
-    return print_value(value, None if sigma is None or not np.isfinite(sigma) or sigma <= 0 else sigma)
-
-
 def _first(values: FloatArray | None) -> float | None:
     return None if values is None else float(values[0])
-
-
-def _table(title: str, rows: list[list[str]], note: str = "", head: list[str] | None = None) -> dict[str, Any]:
-    return {"title": title, "note": note, "head": head or [], "rows": rows}
 
 
 def _place(crystal: Crystal, vector: FloatArray | None) -> str:
@@ -108,11 +139,17 @@ def _describe_conduction(
     inverse = estimate.invert()
     sigmas = inverse.sigma_matrix
     values = [
-        ["wide plate, across it", f"{_print(float(found.plate[0]), _first(found.plate_sigma))} {unit}"],
-        ["long bar, along it", f"{_print(float(found.rod[0]), _first(found.rod_sigma))} {unit}"],
-        ["thin sheet, four contacts", f"{_print(float(found.sheet[0]), _first(found.sheet_sigma))} {unit}"],
-        ["in the plate the flow leaves the gradient by", _degrees(found.in_plate.angles, found.in_plate.sigma)],
-        ["in the bar the gradient leaves the flow by", _degrees(found.in_rod.angles, found.in_rod.sigma)],
+        ["wide plate, across it", f"{print_with(float(found.plate[0]), _first(found.plate_sigma))} {unit}"],
+        ["long bar, along it", f"{print_with(float(found.rod[0]), _first(found.rod_sigma))} {unit}"],
+        ["thin sheet, four contacts", f"{print_with(float(found.sheet[0]), _first(found.sheet_sigma))} {unit}"],
+        [
+            "in the plate the flow leaves the gradient by",
+            print_degrees(float(found.in_plate.angles[0]), _first(found.in_plate.sigma)),
+        ],
+        [
+            "in the bar the gradient leaves the flow by",
+            print_degrees(float(found.in_rod.angles[0]), _first(found.in_rod.sigma)),
+        ],
     ]
     out = [
         [f"through {asked.thickness:g} mm it comes out aside by", f"{print_value(flow.shift)} mm"],
@@ -122,21 +159,21 @@ def _describe_conduction(
         out.append(["azimuth from the edge", f"{flow.azimuth:.2f}°".replace("-", "−")])
     cells = [
         [
-            _print(float(inverse.matrix[row, column]), None if sigmas is None else float(sigmas[row, column]))
+            print_with(float(inverse.matrix[row, column]), None if sigmas is None else float(sigmas[row, column]))
             for column in range(3)
         ]
         for row in range(3)
     ]
     name = "resistivity" if like == "conductivity" else "conductivity"
     return [
-        _table("Plate, bar and sheet", values, "Rod or plate is decided by cause and effect."),
-        _table("Where the flow comes out", out),
-        _table(f"The inverse, a {name}", cells, f"In 1/({unit}), in the crystal frame: {estimate.frame}."),
+        build_table("Plate, bar and sheet", values, "Rod or plate is decided by cause and effect."),
+        build_table("Where the flow comes out", out),
+        build_table(f"The inverse, a {name}", cells, f"In 1/({unit}), in the crystal frame: {estimate.frame}."),
     ]
 
 
-def _degrees(angles: FloatArray, sigma: FloatArray | None) -> str:
-    return f"{_print(float(angles[0]), _first(sigma))}°"
+def _print_angle(response: Response) -> str:
+    return print_degrees(float(response.angles[0]), _first(response.sigma))
 
 
 def _describe_response(crystal: Crystal, estimate: Estimate, unit: str, asked: Asked) -> list[dict[str, Any]]:
@@ -144,9 +181,9 @@ def _describe_response(crystal: Crystal, estimate: Estimate, unit: str, asked: A
     rows = [
         ["size of the effect of a unit cause", f"{print_value(float(found.sizes[0]))} {unit}"],
         ["it points", _place(crystal, found.effects[0]) if found.sizes[0] > 0 else "nowhere: there is none"],
-        ["away from the cause by", _degrees(found.angles, found.sigma)],
+        ["away from the cause by", _print_angle(found)],
     ]
-    return [_table("Cause and effect", rows)]
+    return [build_table("Cause and effect", rows)]
 
 
 def _describe_expansion(crystal: Crystal, estimate: Estimate, unit: str, asked: Asked) -> list[dict[str, Any]]:
@@ -167,8 +204,8 @@ def _describe_expansion(crystal: Crystal, estimate: Estimate, unit: str, asked: 
         lengths.append(
             [
                 f"{letter}, {asked.size[number]:g} mm",
-                f"{_print(micrometres * float(changes.lengths[number]), sigma)} µm",
-                f"{_print(float(changes.tilts[number]), None)}°",
+                f"{print_with(micrometres * float(changes.lengths[number]), sigma)} µm",
+                f"{print_with(float(changes.tilts[number]), None)}°",
             ]
         )
     pairs = [(0, 1), (0, 2), (1, 2)]
@@ -179,20 +216,20 @@ def _describe_expansion(crystal: Crystal, estimate: Estimate, unit: str, asked: 
     turned = [
         [
             f"faces {'xyz'[a]} and {'xyz'[b]}",
-            f"{_print(float(minutes[k]), None if spread is None else float(spread[k]))}′",
+            f"{print_with(float(minutes[k]), None if spread is None else float(spread[k]))}′",
         ]
         for k, (a, b) in enumerate(pairs)
     ]
     planes = find_true_planes(per_kelvin)
     tables = [
-        _table(
+        build_table(
             f"From {asked.start:g} K to {asked.end:g} K",
             lengths,
             "Length along each axis, and by how much a line square on its face leaves the normal.",
             ["along", "longer by", "leans by"],
         ),
-        _table("Angles between faces change by", turned, "In minutes of arc."),
-        _table(
+        build_table("Angles between faces change by", turned, "In minutes of arc."),
+        build_table(
             "Planes that do not warp",
             [[_place(crystal, normal)] for normal in planes.normals],
             planes.sentence,
@@ -204,7 +241,7 @@ def _describe_expansion(crystal: Crystal, estimate: Estimate, unit: str, asked: 
         rows = [
             [
                 name,
-                _print(1e6 * float(found.values[k]), None if found.sigma is None else 1e6 * float(found.sigma[k])),
+                print_with(1e6 * float(found.values[k]), None if found.sigma is None else 1e6 * float(found.sigma[k])),
                 "any azimuth" if found.azimuths is None else f"{float(found.azimuths[k]):.1f}° from the edge",
             ]
             for k, name in enumerate(("largest", "smallest"))
@@ -215,7 +252,7 @@ def _describe_expansion(crystal: Crystal, estimate: Estimate, unit: str, asked: 
             if matched
             else "In 10⁻⁶. No azimuth is without mismatch."
         )
-        tables.append(_table(f"On a substrate of {asked.substrate:g} ×10⁻⁶/K", rows, note.replace("-", "−")))
+        tables.append(build_table(f"On a substrate of {asked.substrate:g} ×10⁻⁶/K", rows, note.replace("-", "−")))
     return tables
 
 
@@ -252,12 +289,12 @@ def _describe_optics(crystal: Crystal, estimate: Estimate, entry: Property, aske
         through.append(["a degree of tilt of the cut changes it by", f"{plate.cut.slope:.4g} nm at most"])
     whole = [["optic axis", _place(crystal, axis)] for axis in axes.axes]
     if axes.two_v is not None:
-        whole.append(["2V", f"{_print(axes.two_v, axes.two_v_sigma)}°"])
+        whole.append(["2V", f"{print_with(axes.two_v, axes.two_v_sigma)}°"])
     whole.append(["sign", {"+": "positive", "-": "negative", None: "neither"}[axes.sign]])
     principal = find_principal(permittivity)
     whole.append(["principal indices", ", ".join(f"{float(np.sqrt(value)):.5f}" for value in principal.values)])
     return [
-        _table("Two waves along the normal", rows, "", ["wave", "index", "vibrates", "walks off by"]),
-        _table("A plate", through, "Azimuth right-handed about the outward normal."),
-        _table("The crystal", whole, axes.note or ""),
+        build_table("Two waves along the normal", rows, "", ["wave", "index", "vibrates", "walks off by"]),
+        build_table("A plate", through, "Azimuth right-handed about the outward normal."),
+        build_table("The crystal", whole, axes.note or ""),
     ]

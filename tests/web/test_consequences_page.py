@@ -138,3 +138,53 @@ def test_a_series_in_wavelength_disperses_the_plate(client: TestClient) -> None:
     assert first.endswith(f"{0.1 * 1e5:.5g} nm")
     beyond = client.post(f"/api/samples/{sample['id']}/consequences", json={"wavelength": 800}).json()
     assert "beyond what was measured" in beyond["result"]
+
+
+TRICLINIC = {"cell": [5.1, 6.2, 7.3, 82, 97, 104], "group": "1"}
+
+
+def test_torque_and_easy_direction_of_a_susceptibility(client: TestClient) -> None:
+    free = {"11": -12.0, "12": 0.8, "13": -0.4, "22": -10.0, "23": 0.5, "33": -14.0}
+    sample = make(client, TRICLINIC, "magnetic_susceptibility", "1e-6", free)
+    rows = ask(client, sample, direction="[0 0 1]", edge="(0 1 0)", flux_density=2.0)
+    # x3 is along c and x2 along b*: the plane across [0 0 1] with the edge b* has u = x2, v = x3 × x2 = −x1, so
+    # ½√((χ22 − χ11)² + 4 χ12²) of the numbers above, by hand.
+    amplitude = 0.5 * math.hypot(2.0, 1.6)
+    plane = "Field turning in the plane across it / "
+    assert number(rows[plane + "½√((χuu − χvv)² + 4χuv²)"]) == pytest.approx(amplitude, rel=1e-4)
+    # B²/μ₀ at 2 T is 4/(4π·10⁻⁷) N/m².
+    torque = amplitude * 1e-6 * 4.0 / (4e-7 * math.pi)
+    assert number(rows[plane + "largest torque"]) == pytest.approx(torque, rel=1e-4)
+    along = "Field along the direction / "
+    assert number(rows[along + "susceptibility along it"]) == pytest.approx(-14.0)
+
+
+def test_a_bar_of_a_thermoelectric_crystal_needs_its_conductivity(client: TestClient) -> None:
+    crystal = {"cell": [4.4, 4.4, 30.5, 90, 90, 120], "group": "-3m"}
+    sample = make(client, crystal, "thermopower", "µV/K", {"11": -51.5, "33": -103.0})
+    rows = ask(client, sample, direction="[0 0 1]", start=300.0)
+    assert "Long bar, along it / not told" in rows
+    assert number(rows["Peltier tensor at 300 K / −15450"]) == 0.0
+    mine = sample["document"]["properties"][0]["id"]
+    for change in (
+        {"property": {"kind": "thermal_conductivity", "unit": "W/(m K)"}},
+        {"tensor": {"free": {"11": 9.2, "33": 5.3}}},
+        {"looking": {"property": mine}},
+    ):
+        body = {"parent": sample["revision"], "change": change}
+        answer = client.post(f"/api/samples/{sample['id']}/edit", json=body)
+        assert answer.status_code == 200, answer.text
+        sample = answer.json()
+    rows = ask(client, sample, direction="[0 0 1]")
+    # Along the axis both tensors are diagonal: the bar shows S33 itself.
+    assert number(rows["Long bar, along it / along the bar"]) == pytest.approx(-103.0)
+
+
+def test_rotation_of_polarisation_for_either_hand(client: TestClient) -> None:
+    crystal = {"cell": [4.913, 4.913, 5.405, 90, 90, 120], "group": "32"}
+    sample = make(client, crystal, "gyration", "1e-6", {"11": -58.2, "33": 129.6})
+    rows = ask(client, sample, direction="[0 0 1]", wavelength=510.0, index=1.5482)
+    # Quartz: 29.5 ± 0.2 °/mm at 510 nm (see the test of app.consequences.gyration).
+    table = "Rotation of the plane of polarisation / "
+    assert number(rows[table + "this hand"]) == pytest.approx(29.5, abs=0.2)
+    assert number(rows[table + "the other hand"]) == pytest.approx(-29.5, abs=0.2)
