@@ -17,9 +17,12 @@ from app.web import (
     cut_page,
     error_answers,
     frame_question,
+    glossary_page,
+    guide,
     live,
     next_cuts,
     optics_calls,
+    outputs,
     pages,
     part_sheet,
     readings_closer,
@@ -80,6 +83,7 @@ def create_app(data_dir: Path | None = None) -> FastAPI:
     app.state.store = None if data_dir is None else open_store(data_dir)
     error_answers.install(app)
     app.include_router(pages.router)
+    app.include_router(glossary_page.router)
     app.include_router(samples.router)
     app.include_router(tensor_page.router)
     app.include_router(live.router)
@@ -108,6 +112,8 @@ def create_app(data_dir: Path | None = None) -> FastAPI:
     app.include_router(twin_question.router)
     app.include_router(sought_page.router)
     app.include_router(tensor_series.router)
+    app.include_router(outputs.router)
+    app.include_router(guide.router)
     app.include_router(static_files.router)
     app.mount("/static", static_files.RevalidatedFiles(directory=static_folder()), name="static")
     return app
