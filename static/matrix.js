@@ -1,5 +1,6 @@
 // The two matrices, the sentence and the column: views as functions with an idempotent update.
 
+import { currentView, drawLinks, fillCell } from "./matrix-views.js";
 import { make } from "./overlay.js";
 import { typeset } from "./typeset.js";
 
@@ -13,30 +14,42 @@ export const el = (name, set = {}, ...inner) => {
 const lock = () => { const svg = make("svg", { class: "lock", viewBox: "0 0 12 14", "aria-hidden": "true" }); svg.append(make("path", { d: "M3 6.2V4a3 3 0 0 1 6 0v2.2" }), make("rect", { x: 1.2, y: 6.2, width: 9.6, height: 7, rx: 1 })); return svg; };
 /** @param {any} n */
 const number = (n) => [el("span", { class: "i" }, n.whole), el("span", { class: "f" }, n.rest, el("span", { class: "u" }, n.spread))];
+/** Changes the texts of a printed number in place. @param {Element} place @param {any} n */
+const setNumber = (place, n) => {
+  const whole = place.querySelector(":scope > .i"), rest = place.querySelector(":scope > .f")?.firstChild, spread = place.querySelector(".u");
+  if (!whole || rest?.nodeType !== Node.TEXT_NODE || !spread) return place.replaceChildren(...number(n));
+  for (const [node, text] of /** @type {[Node, string][]} */ ([[whole, n.whole], [rest, n.rest], [spread, n.spread]])) if (node.textContent !== text) node.textContent = text;
+};
 const byId = (/** @type {string} */ id) => /** @type {HTMLElement} */ (document.getElementById(id));
 const tags = /** @type {Record<string, string>} */ ({ symbol: "i", sub: "sub", value: "strong" });
 
 /** @param {any} answer */
 export function showPose(answer) {
-  byId("sentence").querySelectorAll("span.l1, span.l2").forEach((line, k) => line.replaceChildren(...answer.sentence.lines[k].map((/** @type {any} */ [text, role]) => (tags[role] ? el(tags[role], {}, text) : el("span", role === "plain" ? {} : { class: "nw" }, text)))));
+  byId("sentence").querySelectorAll("span.l1, span.l2").forEach((line, k) => line.replaceChildren(...answer.sentence.lines[k].flatMap((/** @type {any} */ [text, role]) => (tags[role] ? [el(tags[role], {}, text)] : role === "plain" ? typeset(text) : [el("span", { class: "nw" }, text)]))));
   byId("where").replaceChildren(...typeset(answer.where));
   document.querySelectorAll("#specimen-matrix .cell").forEach((cell, k) => {
     const content = answer.cells[Math.floor(k / 3)][k % 3];
-    cell.replaceChildren(...number(content.number), ...(content.state === "zero" ? [lock()] : []));
+    const view = currentView();
+    cell.replaceChildren(...(view === "numbers" ? [...number(content.number), ...(content.state === "zero" ? [lock()] : [])] : fillCell(content, view, lock, number)));
     cell.classList.toggle("zero", content.state === "zero");
-    cell.setAttribute("aria-label", `cell ${content.label}: ${content.number.text}, ${content.because}`);
-    if (cell.classList.contains("shown")) byId("posed-why").replaceChildren(...typeset(content.because));
+    cell.setAttribute("aria-label", content.spoken);
+    if (cell.classList.contains("shown")) byId("posed-why").replaceChildren(...typeset(explain(content)));
   });
+  drawLinks(byId("specimen-matrix"), answer.cells.flat(), currentView());
   byId("along").querySelectorAll("tbody tr").forEach((row, k) => {
     const { value, rod, flux } = answer.along[k];
     const cells = row.querySelectorAll("td");
-    cells[0].replaceChildren(...number(value));
-    cells[1].replaceChildren(...(rod ? number(rod) : ["–"]));
+    setNumber(cells[0], value);
+    if (rod) setNumber(cells[1], rod);
+    else cells[1].replaceChildren("–");
     cells[1].hidden = byId("other-head").hidden;
     cells[2].textContent = flux;
   });
   showRuler(answer.ruler);
 }
+
+/** Why a cell of the specimen frame is what it is; in the formula form and the diagram its value by the crystal's free cells. @param {any} cell */
+const explain = (cell) => (["formula", "dots"].includes(currentView()) && cell.state !== "zero" ? cell.sum : cell.because);
 
 /** @param {any} p @param {number} x */
 function principalName(p, x) {
@@ -45,14 +58,25 @@ function principalName(p, x) {
   return text;
 }
 
-/** @param {any} ruler */
+let scale = "";
+
+/** The scale and its principal values stay while a tensor is turned; only the marks of the axes move. @param {any} ruler */
 function showRuler(ruler) {
   const at = (/** @type {number} */ part) => 8 + 300 * part;
-  const parts = [make("path", { d: "M8 36H308V62H8Z" + ruler.ticks.map((/** @type {any} */ t) => `M${at(t.at)} 36v${t.text ? 9 : 4}`).join("") })];
-  for (const tick of ruler.ticks) if (tick.text) parts.push(make("text", { x: at(tick.at), y: 58 }, tick.text));
-  for (const p of ruler.principal) parts.push(make("path", { class: `mark${p.locked ? " locked" : ""}`, d: `M${at(p.at)} 17l5 5-5 5-5-5ZM${at(p.at)} 27v9` }), principalName(p, at(p.at)));
-  for (const a of ruler.axes) parts.push(make("path", { class: "mark", d: `M${at(a.at)} 62l4 10h-8Z` }), make("text", { class: "name", x: at(a.at), y: 88 }, a.name));
-  byId("ruler").replaceChildren(...parts);
+  const svg = byId("ruler"), asked = JSON.stringify([ruler.ticks, ruler.principal]);
+  if (scale !== asked) {
+    const still = [make("path", { d: "M8 36H308V62H8Z" + ruler.ticks.map((/** @type {any} */ t) => `M${at(t.at)} 36v${t.text ? 9 : 4}`).join("") })];
+    for (const tick of ruler.ticks) if (tick.text) still.push(make("text", { x: at(tick.at), y: 58 }, tick.text));
+    for (const p of ruler.principal) still.push(make("path", { class: `mark${p.locked ? " locked" : ""}`, d: `M${at(p.at)} 17l5 5-5 5-5-5ZM${at(p.at)} 27v9` }), principalName(p, at(p.at)));
+    const axes = ruler.axes.flatMap((/** @type {any} */ a) => [make("path", { class: "mark", "data-axis": a.name }), make("text", { class: "name", "data-axis": a.name, y: 88 }, a.name)]);
+    svg.replaceChildren(...still, ...axes);
+    scale = asked;
+  }
+  for (const a of ruler.axes) {
+    const [mark, name] = svg.querySelectorAll(`[data-axis="${a.name}"]`);
+    mark.setAttribute("d", `M${at(a.at)} 62l4 10h-8Z`);
+    name.setAttribute("x", String(at(a.at)));
+  }
 }
 
 /** @param {any} subject */
@@ -62,10 +86,12 @@ export function showSubject(subject) {
     const button = document.querySelector(`[data-cell="${cell.label}"]`);
     if (!button) continue;
     button.className = `cell ${cell.state}`;
-    button.setAttribute("aria-label", `cell ${cell.label}: ${cell.number.text}, ${cell.because}`);
-    if (cell.state === "zero") button.replaceChildren(el("span", { class: "i" }, "0"), el("span", { class: "f" }, lock()));
+    button.setAttribute("aria-label", cell.spoken);
+    if (currentView() !== "numbers") button.replaceChildren(...fillCell(cell, currentView(), lock, number), ...(cell.state === "tied" && currentView() === "six" ? [el("span", { class: "eq" }, lock(), `= ${cell.equals}`)] : []));
+    else if (cell.state === "zero") button.replaceChildren(el("span", { class: "i" }, "0"), el("span", { class: "f" }, lock()));
     else button.replaceChildren(...number(cell.number), ...(cell.state === "tied" ? [el("span", { class: "eq" }, lock(), `= ${cell.equals}`)] : []));
   }
+  drawLinks(byId("crystal-matrix"), subject.cells.flat(), currentView());
   byId("shape").textContent = subject.shape;
   byId("other-head").textContent = subject.other ?? "";
   byId("other-head").hidden = !subject.other;
@@ -111,7 +137,7 @@ export function explainPosed(answer) {
     table.querySelectorAll(".shown").forEach((other) => other.classList.remove("shown"));
     button.classList.add("shown");
     const cell = answer().cells.flat().find((/** @type {any} */ c) => c.label === /** @type {any} */ (button).dataset.posed);
-    byId("posed-why").replaceChildren(...typeset(cell.because));
+    byId("posed-why").replaceChildren(...typeset(explain(cell)));
   };
   table.addEventListener("focusin", tell);
   table.addEventListener("mouseover", tell);

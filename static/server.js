@@ -109,5 +109,23 @@ export const lookCloser = (id) => ask("POST", `${at(id)}/readings/closer`);
 export const nextCuts = (id, asked) => ask("POST", `${at(id)}/readings/next-cuts`, asked);
 /** A question about the readings: isolate, cube, true-normal, piece or twin. @param {string} id @param {string} question @param {any} asked */
 export const askReadings = (id, question, asked) => ask("POST", `${at(id)}/readings/${question}`, asked);
+/** The lines of the glossary by their keys. */
+export const fetchTerms = () => ask("GET", "/api/terms");
 /** A calculation call. @param {string} name @param {object} body */
 export const call = (name, body) => ask("POST", `/api/v1/${name}`, body);
+/** A file that the server makes, with the name it is saved under. @param {string} path @returns {Promise<{blob: Blob, name: string}>} @throws {ServerError} */
+export async function fetchFile(path) {
+  let answer;
+  try {
+    answer = await fetch(path);
+  } catch {
+    throw new ServerError(0, GONE);
+  }
+  if (!answer.ok) throw new ServerError(answer.status, (await answer.json().catch(() => null))?.error ?? GONE);
+  const given = /filename\*=UTF-8''([^;]+)/.exec(answer.headers.get("Content-Disposition") ?? "");
+  try {
+    return { blob: await answer.blob(), name: given ? decodeURIComponent(given[1]) : "file" };
+  } catch {
+    throw new ServerError(0, GONE);
+  }
+}

@@ -2,6 +2,7 @@
 
 import { followWith, showFollowed } from "./follow.js";
 import { openLive } from "./live.js";
+import { installViews } from "./matrix-views.js";
 import { explainPosed, makeEditable, showPose, showPoses, showProperty, showSubject, showSurfaceWords } from "./matrix.js";
 import { drawOverlay } from "./overlay.js";
 import { currentSample, edit, step } from "./page.js";
@@ -19,7 +20,7 @@ function start({ subject, first }) {
   let last = first, waiting = /** @type {any} */ (null), saving = /** @type {any} */ (null), revision = currentSample().revision;
   const startPose = state.pose;
   const scene = makeScene(byId("plot"), () => { byId("no-picture").hidden = false; });
-  const paint = (/** @type {any} */ answer) => { last = answer; showPose(answer); drawOverlay(back, front, answer.overlay); scene.look(answer.camera); };
+  const paint = (/** @type {any} */ answer) => { last = answer; scene.look(answer.camera); showPose(answer); drawOverlay(back, front, answer.overlay); };
   const paintSubject = (/** @type {any} */ given) => { subject = given; showSubject(given); showProperty(currentSample().derived.property, given.unit); showSurfaceWords(given, state.surface); showFollowed(given.followed); };
   const live = openLive({
     onOpen: () => askSubject(),
@@ -92,6 +93,8 @@ function start({ subject, first }) {
   figure.addEventListener("pointercancel", end);
 
   const choose = (/** @type {string} */ attribute, /** @type {string} */ value) => document.querySelectorAll(`[data-${attribute}]`).forEach((button) => button.setAttribute("aria-pressed", String(/** @type {any} */ (button).dataset[attribute] === value)));
+  // A part of the way to the pose is shown, and nothing is kept of it.
+  document.addEventListener("show-part", (event) => { if (!state.press) request({ way: /** @type {CustomEvent} */ (event).detail }); });
   const setSurface = (/** @type {string} */ kind) => { state = { ...state, surface: kind }; choose("surface", kind); showSurfaceWords(subject, kind); live.send({ type: "surface", hash: state.hash, surface: kind }); request(); };
   document.querySelectorAll("[data-surface]").forEach((b) => b.addEventListener("click", () => setSurface(/** @type {any} */ (b).dataset.surface)));
   document.querySelectorAll("[data-hold]").forEach((b) => b.addEventListener("click", () => { const hold = /** @type {any} */ (b).dataset.hold; choose("hold", hold); request({ hold }); }));
@@ -146,6 +149,10 @@ function start({ subject, first }) {
   showPoses(currentSample().document.poses ?? []);
   paintSubject(subject);
   paint(first);
+  installViews(() => { showSubject(subject); showPose(last); }, (frame) => {
+    const name = currentSample().derived.property.name;
+    return frame === "crystal" ? { about: { name, unit: subject.unit, frame: `crystal frame: ${subject.frame}`, axes: ["x1", "x2", "x3"] }, cells: subject.cells.flat() } : { about: { name, unit: subject.unit, frame: `specimen frame: ${last.where}`, axes: ["x", "y", "z"] }, cells: last.cells.flat() };
+  });
   const loaded = () => { if (/** @type {any} */ (window).Plotly) live.send({ type: "surface", hash: state.hash, surface: state.surface }); };
   window.addEventListener("load", loaded);
   matchMedia("(prefers-color-scheme: dark)").addEventListener("change", () => loaded());

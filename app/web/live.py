@@ -31,6 +31,7 @@ from app.web.parts import Number, Part, Pose, Text, ThreeByThree
 from app.web.posed import describe_pose, describe_subject
 from app.web.scene import Subject, pack_scene
 from app.web.settling import find_settling, fingerprint_readings
+from app.web.showing import turn_part
 from app.web.sought import find_answer, fingerprint_answer
 from app.web.turning import (
     Caught,
@@ -105,6 +106,9 @@ class TurnMessage(Part):
     hold: Hold | None = Field(None, description="hold this from now on; the picture stays")
     surface: SurfaceKind = "quadric"
     catch: bool = False
+    way: Number | None = Field(
+        None, ge=0, le=1, description="part of the turn from the crystal frame to the pose to show; the pose stays"
+    )
 
 
 _messages: TypeAdapter[TensorMessage | SurfaceMessage | TurnMessage] = TypeAdapter(
@@ -214,8 +218,13 @@ def answer_turn(subject: Subject, message: TurnMessage) -> dict[str, Any]:
         view = look(view, *message.look)
     if message.hold is not None:
         view = view.exchange(message.hold, pose.matrix)
-    answer = describe_pose(subject, message.surface, pose, kept, view, caught)
-    return {"type": "state", "hash": subject.key, "seq": message.seq, **answer}
+    if message.way is not None and message.way < 1:
+        part = as_pose(turn_part(pose.matrix, message.way))
+        answer = describe_pose(subject, message.surface, part, {"matrix": part.matrix.tolist()}, view)
+        answer["pose"] = {**answer["pose"], "kept": kept}
+    else:
+        answer = describe_pose(subject, message.surface, pose, kept, view, caught)
+    return {"type": "state", "hash": subject.key, "seq": message.seq, "way": message.way, **answer}
 
 
 def read_message(text: str) -> TensorMessage | SurfaceMessage | TurnMessage:

@@ -12,12 +12,15 @@ from starlette.templating import Jinja2Templates
 
 from app.catalogue.listing import list_properties
 from app.crystal.frame import list_letter_rules
+from app.store.revisions import Kept
 from app.version import VERSION
 from app.web.group_choice import list_choices
 from app.web.kept import render_entry, render_sample
+from app.web.keys import list_keys
 from app.web.resources import plotly_version, templates_folder
 from app.web.samples import list_samples, render_summary, store_of
 from app.web.static_files import HashedAddresses
+from app.web.terms import link_term
 from app.web.typesetting import typeset
 
 router = APIRouter(include_in_schema=False)
@@ -26,14 +29,25 @@ PAGES = (("tensor", "Tensor"), ("readings", "Readings"), ("cut", "Cut"), ("serie
 """The pages of a sample that are there, in the order of the way through it."""
 
 
+GUIDE_OF = {"tensor": "tensor", "readings": "readings", "cut": "orientation", "series": "series", "sheet": "hand-over"}
+"""The page of the guide that each page of a sample leads to."""
+
+
 def _with_constants(_request: Request) -> dict[str, Any]:
     """What every template may use."""
-    return {"version": VERSION, "plotly_script": f"/static/plotly.min.js?v={plotly_version()}", "pages": PAGES}
+    return {
+        "version": VERSION,
+        "plotly_script": f"/static/plotly.min.js?v={plotly_version()}",
+        "pages": PAGES,
+        "guide_of": GUIDE_OF,
+        "list_keys": list_keys,
+    }
 
 
 templates = Jinja2Templates(directory=templates_folder(), context_processors=[_with_constants])
 templates.env.add_extension(HashedAddresses)
 templates.env.filters["typeset"] = typeset
+templates.env.globals["term"] = link_term
 
 
 def embed_json(content: Any) -> Markup:
@@ -45,13 +59,15 @@ def embed_json(content: Any) -> Markup:
     return Markup(text)
 
 
-def render_page(request: Request, template: str, sample_id: str, page: str, **more: Any) -> Response:
-    """A page of one sample.
+def render_page(
+    request: Request, template: str, sample_id: str, page: str, kept: Kept | None = None, **more: Any
+) -> Response:
+    """A page of one sample, of its newest revision or of the one in ``kept``.
 
     The template finds ``sample`` (the answer of the sample call), ``sample_json`` (the same for the data block),
     ``page`` (the key of the current page) and what the strip needs.
     """
-    sample = render_sample(store_of(request).samples.get(sample_id))
+    sample = render_sample(store_of(request).samples.get(sample_id) if kept is None else kept)
     context = {
         "sample": sample,
         "sample_json": embed_json(sample),

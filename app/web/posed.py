@@ -31,6 +31,7 @@ from app.tensor.sentence import (
 from app.tensor.surface import SurfaceKind
 from app.tensor.surface_lines import choose_levels
 from app.tensor.values import compute_flux, compute_flux_angles, compute_values
+from app.web.matrix_views import view_cell, view_sigma
 from app.web.overlay import draw_overlay
 from app.web.rendering import render_pose
 from app.web.ruler import render_ruler
@@ -45,7 +46,7 @@ REGION_FACTOR: Final = 1.96
 
 def render_number(value: float, sigma: float | None) -> dict[str, str]:
     """A printed number in three parts, so that columns align on the point: whole, rest, spread."""
-    return _part_number(print_value(value, None if sigma is None or not np.isfinite(sigma) else sigma))
+    return _part_number(print_value(value, view_sigma(sigma)))
 
 
 def _part_number(printed: str) -> dict[str, str]:
@@ -74,15 +75,19 @@ def render_matrix(
             lock,
             float(estimate.matrix.flat[place]),
             None if sigmas is None else float(sigmas.flat[place]),
+            form.free,
         )
         for place, lock in enumerate(locks)
     ]
     return [cells[0:3], cells[3:6], cells[6:9]]
 
 
-def _render_cell(label: str, lock: CellLock, value: float, sigma: float | None) -> dict[str, Any]:
+def _render_cell(
+    label: str, lock: CellLock, value: float, sigma: float | None, free: tuple[int, ...]
+) -> dict[str, Any]:
     number = render_number(0.0, None) if lock.state == "zero" else render_number(value, sigma)
-    return {"label": label, "state": lock.state, "because": lock.because, "equals": lock.equals, "number": number}
+    shown = {"label": label, "state": lock.state, "because": lock.because, "equals": lock.equals, "number": number}
+    return {**shown, **view_cell(label, lock, value, sigma, free)}
 
 
 def describe_subject(subject: Subject) -> dict[str, Any]:
