@@ -52,9 +52,10 @@ class Patch:
     """A connected piece of a surface.
 
     Attributes:
-        points: shape (n, 3), in axes of the patch, the polar one last. Of a quadric sheet its vertices; of a
-            star-shaped surface unit directions.
-        axes: shape (3, 3), the patch's axes as rows; left-handed for a mirrored one.
+        points: shape (n, 3), in axes of the patch, the polar one last. Of an open quadric sheet its vertices; of an
+            ellipsoid and a star-shaped surface unit directions.
+        axes: shape (3, 3), the patch's axes as rows, of an ellipsoid as long as its semi-axes; left-handed for a
+            mirrored one.
         values: shape (n,), the sheet's nᵀAn, not negative.
         grid: how the points hang together.
     """
@@ -81,9 +82,9 @@ def build_quadric_patches(values: FloatArray, axes: FloatArray, cut: float, deta
     if len(positive) == 3:
         order = order_axes(int(np.argmin(values)))
         directions, grid = build_sphere(detail)
-        points = directions * (1.0 / np.sqrt(values[order]))
-        # On a sheet the value is 1/|x|²; principal coordinates give it without cancellation.
-        return [Patch(points, axes[order], 1.0 / np.einsum("ij,ij->i", points, points), grid)]
+        # The axes carry the lengths. On a sheet the value is 1/|x|², without cancellation in principal coordinates.
+        lengths = 1.0 / np.sqrt(values[order])
+        return [Patch(directions, axes[order] * lengths[:, None], 1.0 / (square_sphere(detail) @ lengths**2), grid)]
     if len(positive) == 2:
         order = order_axes(int(np.argmin(values)))
         return [_build_belt(values[order], axes[order], cut, detail)]
@@ -106,7 +107,7 @@ def build_value_patches(values: FloatArray, axes: FloatArray, detail: int) -> li
     if len(positive) == 3:
         order = order_axes(int(np.argmin(values)))
         directions, grid = build_sphere(detail)
-        return [Patch(directions, axes[order], np.square(directions) @ values[order], grid)]
+        return [Patch(directions, axes[order], square_sphere(detail) @ values[order], grid)]
     if len(positive) == 2:
         order = order_axes(int(np.argmin(values)))
         return [_build_value_belt(values[order], axes[order], detail)]
@@ -133,6 +134,14 @@ def build_sphere(detail: int) -> tuple[FloatArray, Grid]:
     directions = np.concatenate([[[0.0, 0.0, 1.0]], rings.reshape(-1, 3), [[0.0, 0.0, -1.0]]])
     directions.setflags(write=False)
     return directions, Grid(detail - 1, 2 * detail, first_pole=True, last_pole=True)
+
+
+@lru_cache(maxsize=8)
+def square_sphere(detail: int) -> FloatArray:
+    """The squares of the components of ``build_sphere``, shape (n, 3), read-only."""
+    squares = np.square(build_sphere(detail)[0])
+    squares.setflags(write=False)
+    return squares
 
 
 @lru_cache(maxsize=32)

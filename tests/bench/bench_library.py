@@ -12,11 +12,13 @@ import scipy.linalg
 
 from app.crystal.crystal import build_crystal
 from app.crystal.direction import Direction
+from app.readings.campaign import build_plan, plan_campaign
+from app.readings.candidates import resolve_candidates
 from app.readings.fit import fit_readings
 from app.readings.reading import Reading
 from app.tensor import form as forms
 from app.tensor.kind import Kind
-from app.tensor.pose import pose_from_axis_angle, turn_tensors
+from app.tensor.pose import IDENTITY, pose_from_axis_angle, turn_tensors
 from app.tensor.surface import build_surface
 from app.tensor.values import compute_values
 from tests.bench.conftest import Beside, time_call
@@ -163,3 +165,21 @@ def test_mesh(beside: Beside, kind: str, surface: Any) -> None:
         1.5,
         rounds=60,
     )
+
+
+def plan_time(candidates: int, picks: int) -> float:
+    directions = np.random.default_rng(candidates).normal(size=(candidates, 3))
+    listed = [Direction("vector", tuple(row)) for row in directions.tolist()]
+    plan = build_plan(CRYSTAL, POLAR, [], resolve_candidates(CRYSTAL, listed, IDENTITY), 0.1)
+    criterion = plan.read_criterion("D")
+    return time_call(lambda: plan_campaign(plan, criterion, picks), 3)
+
+
+def test_next_cuts_against_candidates_and_picks(beside: Beside) -> None:
+    for name, cases, sizes in (
+        ("candidates up to 10,000, 12 picks", [(1_000, 12), (3_000, 12), (10_000, 12)], (1_000, 3_000, 10_000)),
+        ("picks up to 48, 10,000 candidates", [(10_000, 12), (10_000, 24), (10_000, 48)], (12, 24, 48)),
+    ):
+        times = [plan_time(*case) for case in cases]
+        exponent = float(np.polyfit(np.log(sizes), np.log(times), 1)[0])
+        beside.tell(f"next cuts, {name}: exponent", exponent, 1.1, f"{times[-1] * 1e3:.0f} ms")

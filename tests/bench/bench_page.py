@@ -32,7 +32,12 @@ MEASURE = """async ({ answers, interleave }) => {
   const place = ({ eye, up }) => ({ "scene.camera": { eye: vector(eye), up: vector(up), ...set } });
   const move = async ({ camera }) => window.Plotly.relayout(plot, place(camera));
   const frame = () => new Promise((done) => requestAnimationFrame(done));
-  const turn = async (answer) => { const moved = move(answer); showPose(answer); drawOverlay(back, front, answer.overlay); await moved; };
+  const turn = async (answer) => {
+    const moved = move(answer);
+    showPose(answer);
+    drawOverlay(back, front, answer.overlay);
+    await moved;
+  };
   const script = { turn: [], bare: [] }, interval = { turn: [], bare: [] };
   for (const name of interleave) {
     let last = await frame();
