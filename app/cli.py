@@ -67,6 +67,8 @@ def run_serve(options: argparse.Namespace) -> int:
     if data_dir.exists() and not data_dir.is_dir():
         raise InputError(f"{data_dir} is not a folder.", field="--data", hint="Name a folder; it is made when needed.")
 
+    # The matrices of this tool are small: sharing one among threads costs more than it brings, and makes turns uneven.
+    os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
     from app.web.serving import serve
 
     serve(options.port, data_dir, open_browser=not options.no_browser)

@@ -13,7 +13,7 @@ from typing import TYPE_CHECKING, Any, Final, overload
 import numpy as np
 import numpy.typing as npt
 
-from app.catalogue.listing import find_property
+from app.catalogue.listing import PROPERTIES, find_property
 from app.errors import InputError
 from app.tensor.printing import print_superscript, print_value, replace_minus_signs
 
@@ -59,6 +59,19 @@ def print_unit(text: str) -> str:
     Raises:
         InputError: the unit cannot be read, is unknown, or has a zero of its own (like °C).
     """
+    # What the catalogue spells it also prints, and the first page then need not wait for pint.
+    return _list_printed().get(text) or compose_unit(text)
+
+
+@lru_cache(maxsize=1)
+def _list_printed() -> dict[str, str]:
+    """The printed form of every unit of the catalogue, by either of its spellings."""
+    units = [unit for entry in PROPERTIES if not entry.own_unit for unit in (entry.unit, *entry.units)]
+    return {spelling: unit.printed for unit in units for spelling in (unit.text, unit.printed)}
+
+
+def compose_unit(text: str) -> str:
+    """The printed form of a unit, read and put together anew; otherwise as ``print_unit``."""
     return _compose(_read_unit(text), _WORD.findall(_spell_for_library(text)))
 
 

@@ -8,7 +8,7 @@ import numpy as np
 import pytest
 
 from app.catalogue.listing import find_property, list_properties
-from app.catalogue.units import check_unit, find_factor, print_unit
+from app.catalogue.units import check_unit, compose_unit, find_factor, print_unit
 from app.errors import InputError
 from app.readings.reading import READING_KINDS
 
@@ -89,7 +89,8 @@ def test_units_are_readable_and_printed_as_the_printer_prints() -> None:
     for entry in list_properties():
         assert entry.own_unit or entry.units[0] == entry.unit
         for unit in (entry.unit, *entry.units):
-            assert print_unit(unit.text) == unit.printed
+            assert compose_unit(unit.text) == compose_unit(unit.printed) == unit.printed
+            assert print_unit(unit.text) == print_unit(unit.printed) == unit.printed
             check_unit(entry.key, unit.text)
         assert len({unit.printed for unit in entry.units}) == len(entry.units)
 
