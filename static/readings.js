@@ -4,6 +4,7 @@ import { el } from "./matrix.js";
 import { currentSample, take } from "./page.js";
 import * as grids from "./readings-state.js";
 import { fetchReadings, postReadings, postTable } from "./server.js";
+import { typeset } from "./typeset.js";
 
 const get = (/** @type {string} */ id) => /** @type {any} */ (document.getElementById(id));
 const grid = get("grid"), body = grid.tBodies[0], form = get("table-form"), table = get("table");
@@ -68,8 +69,8 @@ function paint() {
 
 /** What the rows give, as the server set it. @param {any} answer */
 function showAnswer(answer) {
-  get("headline").textContent = answer.headline;
-  get("second-line").textContent = answer.second_line;
+  get("headline").replaceChildren(...typeset(answer.headline));
+  get("second-line").replaceChildren(...typeset(answer.second_line));
   get("unit").textContent = answer.unit;
   get("fit-side").innerHTML = answer.result;
   form.action = `/samples/${answer.sample.id}/readings?revision=${answer.sample.revision}`;

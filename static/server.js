@@ -1,5 +1,7 @@
 // The one module that talks to the server over HTTP. Edits wait for each other, so that one is in flight at a time.
 
+import { wait } from "./waiting.js";
+
 /** What the server refused, or that it cannot be reached (status 0). */
 export class ServerError extends Error {
   /** @param {number} status @param {{message: string, field?: string|null, hint?: string|null, detail?: any}} error */
@@ -21,7 +23,10 @@ const GONE = {
  * One request. @param {string} method @param {string} path @param {any} [body] @returns {Promise<any>}
  * @throws {ServerError}
  */
-async function ask(method, path, body) {
+const ask = (method, path, body) => wait(() => send(method, path, body));
+
+/** The same without a word of waiting. @param {string} method @param {string} path @param {any} [body] @returns {Promise<any>} */
+async function send(method, path, body) {
   let answer;
   try {
     answer = await fetch(path, {

@@ -11,10 +11,10 @@ function install() {
   const page = /** @type {HTMLElement} */ (document.querySelector("main.tensor-page"));
   const still = matchMedia("(prefers-reduced-motion: reduce)");
   const slider = byId("way-part"), turning = byId("slow-turn");
-  let run = 0, began = 0, shown = /** @type {any} */ (null), sent = 0;
+  let run = 0, began = 0, shown = /** @type {any} */ (null), sent = 1;
   document.addEventListener("painted", (event) => {
     shown = /** @type {CustomEvent} */ (event).detail;
-    if (shown.answer.way === null || shown.answer.way === undefined) place(1);
+    if (shown.answer.way === null || shown.answer.way === undefined) { if (!run) sent = 1; place(1); }
   });
   const place = (/** @type {number} */ part) => { slider.value = String(Math.round(100 * part)); byId("way-said").textContent = nameWay(part); slider.setAttribute("aria-valuetext", nameWay(part)); };
   const show = (/** @type {number} */ part) => { sent = part; place(part); document.dispatchEvent(new CustomEvent("show-part", { detail: part })); };

@@ -20,7 +20,9 @@ function start({ subject, first }) {
   let last = first, waiting = /** @type {any} */ (null), saving = /** @type {any} */ (null), revision = currentSample().revision;
   const startPose = state.pose;
   const scene = makeScene(byId("plot"), () => { byId("no-picture").hidden = false; });
-  const paint = (/** @type {any} */ answer) => { last = answer; scene.look(answer.camera); showPose(answer); drawOverlay(back, front, answer.overlay); };
+  const paint = (/** @type {any} */ answer) => { last = answer; scene.look(answer.camera); showPose(answer); drawOverlay(back, front, answer.overlay); tellPainted(answer); };
+  // Whoever shows or links what is drawn hears of every picture.
+  const tellPainted = (/** @type {any} */ answer) => document.dispatchEvent(new CustomEvent("painted", { detail: { answer, surface: state.surface, at: follow.at() } }));
   const paintSubject = (/** @type {any} */ given) => { subject = given; showSubject(given); showProperty(currentSample().derived.property, given.unit); showSurfaceWords(given, state.surface); showFollowed(given.followed); };
   const live = openLive({
     onOpen: () => askSubject(),

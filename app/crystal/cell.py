@@ -6,6 +6,7 @@ angle in this module is in angstrom and degrees; arrays of six run a, b, c, alph
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 from typing import Final
 
@@ -26,6 +27,9 @@ SIGMA_TOLERANCE: Final = 3.0
 
 FLATNESS_LIMIT: Final = 1e-7
 """Least volume over a·b·c: below it the three edges lie in one plane as far as printed digits can tell."""
+
+FLAT: Final = 1e-3
+"""Squared volume over (a·b·c)² below which cosines lose digits that the angles still have."""
 
 _EXACT_COSINES: Final = {60.0: 0.5, 90.0: 0.0, 120.0: -0.5}
 
@@ -50,7 +54,15 @@ class Cell:
     @property
     def volume(self) -> float:
         """Volume in cubic angstrom."""
+        if self.flat_basis is not None:
+            return float(np.prod(np.diag(self.flat_basis)))
         return float(np.sqrt(np.linalg.det(self.metric)))
+
+    @property
+    def flat_basis(self) -> FloatArray | None:
+        """Of a cell so flat that its metric has lost digits, a basis that has them, shape (3, 3); None of others."""
+        unit_metric = self.metric / np.outer(self.parameters[:3], self.parameters[:3])
+        return compute_flat_basis(self.parameters) if np.linalg.det(unit_metric) < FLAT else None
 
     @property
     def is_hexagonal(self) -> bool:
@@ -137,6 +149,30 @@ def compute_metric(parameters: FloatArray) -> FloatArray:
         metric[..., row, column] *= cosines[..., cosine_index]
         metric[..., column, row] = metric[..., row, column]
     return metric
+
+
+def compute_flat_basis(parameters: FloatArray) -> FloatArray:
+    """A right-handed basis of a cell however flat: a b c as columns, upper triangular, shape (3, 3).
+
+    The metric holds cosines, whose differences lose what small angles, and angles near the limits of a cell, still
+    tell. Here all differences are taken of the angles themselves: with s half their sum, the volume is
+    2abc √(sin s sin(s−α) sin(s−β) sin(s−γ)) (International Tables for Crystallography C, 2006, chapter 1.1).
+    """
+    a, b, c = parameters[:3]
+    _, beta, gamma = np.deg2rad(parameters[3:])
+    # Exact sums of degrees: radians would be rounded before the differences are taken.
+    halves = np.deg2rad([math.fsum([*parameters[3:], -2.0 * angle]) / 2.0 for angle in parameters[3:]])
+    rest = np.deg2rad(math.fsum([360.0, *-parameters[3:]]) / 2.0)
+    volume = 2.0 * np.sqrt(np.sin(rest) * np.prod(np.sin(halves)))
+    # cos α − cos β cos γ, as sin β sin γ − 2 sin((α + β − γ)/2) sin((α − β + γ)/2).
+    across = np.sin(beta) * np.sin(gamma) - 2.0 * np.sin(halves[2]) * np.sin(halves[1])
+    return np.array(
+        [
+            [a, b * np.cos(gamma), c * np.cos(beta)],
+            [0.0, b * np.sin(gamma), c * across / np.sin(gamma)],
+            [0.0, 0.0, c * volume / np.sin(gamma)],
+        ]
+    )
 
 
 def compute_parameters(metric: FloatArray) -> FloatArray:

@@ -30,7 +30,7 @@ FloatArray = npt.NDArray[np.float64]
 LONGEST_COMMENT: Final = 400
 MOST_DECIMALS: Final = 10
 
-_SIGNS: Final = {"×": "x", "−": "-", "–": "-", "·": ".", "°": " deg", "Å": "A", "σ": "sigma", "“": '"', "”": '"'}
+_SIGNS: Final = {"×": "x", "−": "-", "–": "-", "·": ".", "°": "deg", "Å": "A", "σ": "sigma", "“": '"', "”": '"'}
 
 
 def write_cif(

@@ -203,7 +203,7 @@ def _build(
         )
     obeying = _make_obey(given, point_group)
     rule = parse_frame_rule(frame)
-    basis = compute_basis(obeying.metric, rule)
+    basis = compute_basis(obeying.metric, rule, obeying.flat_basis)
     basis.setflags(write=False)
     rotations = _compute_rotations(basis, point_group.operations)
     crystal = Crystal(point_group, obeying, given, rule, basis, rotations)

@@ -138,10 +138,14 @@ def list_letter_rules() -> list[FrameRule]:
     ]
 
 
-def compute_basis(metric: FloatArray, rule: FrameRule) -> FloatArray:
-    """M, shape (..., 3, 3): a, b, c in the crystal frame as columns, from metrics of shape (..., 3, 3)."""
-    # Any right-handed basis with this metric will do to start from: the transposed Cholesky factor is one.
-    start = np.swapaxes(np.linalg.cholesky(metric), -1, -2)
+def compute_basis(metric: FloatArray, rule: FrameRule, start: FloatArray | None = None) -> FloatArray:
+    """M, shape (..., 3, 3): a, b, c in the crystal frame as columns, from metrics of shape (..., 3, 3).
+
+    ``start`` is any right-handed basis with this metric, where one is known that is better than the metric.
+    """
+    if start is None:
+        # The transposed Cholesky factor is one.
+        start = np.swapaxes(np.linalg.cholesky(metric), -1, -2)
     row = start @ np.asarray(rule.row.values)
     normal = np.linalg.solve(np.swapaxes(start, -1, -2), np.asarray(rule.normal.values)[..., None])[..., 0]
     row = row / np.linalg.norm(row, axis=-1, keepdims=True)

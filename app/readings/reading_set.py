@@ -6,6 +6,7 @@ import math
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from operator import attrgetter
+from typing import Final
 
 import numpy as np
 import numpy.typing as npt
@@ -21,6 +22,9 @@ IntArray = npt.NDArray[np.int64]
 
 MAX_DIRECTION_SIGMA = 30.0
 """Degrees; beyond it the second-order treatment of a bar's turn has no meaning."""
+
+MOST_BATCH_WORK: Final = 2e8
+"""Readings times the square of their batches: what weighing them together costs. 2e8 takes about a second."""
 
 
 @dataclass(frozen=True)
@@ -98,6 +102,7 @@ def resolve_readings(
                             resolve_direction(crystal, given, reading.pose or pose)
         raise
     numbers = {name: number for number, name in enumerate(known)}
+    _check_batch_work(readings)
     bars, turn_sigma = _collect_bars(readings)
     return ReadingSet(
         kinds=np.array([READING_KINDS.index(reading.kind) for reading in readings], dtype=np.int64),
@@ -146,6 +151,17 @@ def _check_batches(batches: Mapping[str, float]) -> dict[str, float]:
                 hint="Give it as a relative standard deviation from 0 up to 1, for example 0.01 for 1 %.",
             )
     return dict(batches)
+
+
+def _check_batch_work(readings: Sequence[Reading]) -> None:
+    used = len({reading.batch for reading in readings} - {None})
+    if len(readings) * used**2 > MOST_BATCH_WORK:
+        most = int((MOST_BATCH_WORK / len(readings)) ** 0.5)
+        raise InputError(
+            f"{len(readings)} readings may share at most {most} calibrated batches; they are in {used}.",
+            field="batches",
+            hint="Fit in parts, or give fewer batches a calibration error.",
+        )
 
 
 def _check_reading(reading: Reading, kind: Kind, batches: Mapping[str, float], values_required: bool) -> None:

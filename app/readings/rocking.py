@@ -19,6 +19,13 @@ FloatArray = npt.NDArray[np.float64]
 ROD_RATIO: Final = 5.0
 PLATE_RATIO: Final = 10.0
 """From about so many times as long as wide a piece reads as a rod, and as wide as thick as a plate; common practice."""
+
+LARGEST_ANGLE: Final = 3600.0
+SMALLEST_SIGMA: Final = 1e-9
+"""Beyond these no dial reads, and the arithmetic would leave the range of numbers."""
+
+LARGEST_SIZE: Final = 1e9
+
 INDEPENDENT: Final = 1e-6
 
 
@@ -60,6 +67,9 @@ def fit_rocking(azimuths: npt.ArrayLike, angles: npt.ArrayLike, sigma: npt.Array
     finite = bool(np.all(np.isfinite(turn)) and np.all(np.isfinite(observed)))
     if turn.shape != observed.shape or turn.ndim != 1 or not finite:
         raise InputError("Rocking angles come in pairs of finite numbers, azimuth and angle.", field="angles")
+    for field, degrees in (("azimuths", np.asarray(azimuths)), ("angles", observed)):
+        if np.any(np.abs(degrees) > LARGEST_ANGLE):
+            raise InputError(f"An angle here is at most {LARGEST_ANGLE:g}° in size.", field=field)
     design = np.stack([np.ones_like(turn), np.cos(turn), np.sin(turn)], axis=1)
     if len(turn) < 3 or float(np.linalg.svd(design, compute_uv=False)[-1]) < INDEPENDENT:
         raise InputError(
@@ -70,8 +80,11 @@ def fit_rocking(azimuths: npt.ArrayLike, angles: npt.ArrayLike, sigma: npt.Array
     spread = np.ones(len(turn))
     if sigma is not None:
         spread = np.broadcast_to(np.asarray(sigma, dtype=np.float64), turn.shape).copy()
-        if not np.all(np.isfinite(spread)) or np.any(spread <= 0):
-            raise InputError("The standard deviation of a rocking angle is above zero.", field="sigma")
+        if not np.all((spread >= SMALLEST_SIGMA) & (spread <= LARGEST_ANGLE)):
+            raise InputError(
+                f"The standard deviation of an angle here is {SMALLEST_SIGMA:g} to {LARGEST_ANGLE:g} degrees.",
+                field="sigma",
+            )
     whitened = design / spread[:, None]
     found, *_ = np.linalg.lstsq(whitened, observed / spread, rcond=None)
     residual = (observed - design @ found) / spread
@@ -123,8 +136,10 @@ def judge_piece(length: float, width: float, thickness: float) -> tuple[Literal[
         InputError: at ``length``, ``width`` or ``thickness``: not above zero.
     """
     for name, value in (("length", length), ("width", width), ("thickness", thickness)):
-        if not (np.isfinite(value) and value > 0):
-            raise InputError("A size is a length above zero.", field=name)
+        if not 1.0 / LARGEST_SIZE <= value <= LARGEST_SIZE:
+            raise InputError(
+                f"A size is a length above zero, here between {1.0 / LARGEST_SIZE:g} and {LARGEST_SIZE:g}.", field=name
+            )
     across = max(width, thickness)
     if length >= ROD_RATIO * across:
         return "rod", f"It is {length / across:.3g} times as long as wide, so it reads as a rod along its length."

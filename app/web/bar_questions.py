@@ -30,7 +30,7 @@ from app.web.parts import Number, Part
 from app.web.readings_view import require_property
 from app.web.samples import store_of
 
-router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.ERROR_RESPONSES)
+router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.KEPT_ERROR_RESPONSES)
 
 
 class IsolationRequest(Part):

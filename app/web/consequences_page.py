@@ -29,7 +29,7 @@ from app.web.samples import store_of
 
 FloatArray = npt.NDArray[np.float64]
 
-router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.ERROR_RESPONSES)
+router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.KEPT_ERROR_RESPONSES)
 
 
 class ConsequencesRequest(Part):

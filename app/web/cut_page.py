@@ -29,7 +29,7 @@ from app.web.stage_shapes import LabVector
 from app.web.stages import find_stage, list_stages
 
 page_router = APIRouter(include_in_schema=False)
-router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.ERROR_RESPONSES)
+router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.KEPT_ERROR_RESPONSES)
 
 MOST_PARTS = 100
 LONGEST_EDGE = 10_000.0

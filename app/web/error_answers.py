@@ -24,6 +24,8 @@ from app.web.answers import JsonAnswer
 
 _log = logging.getLogger(__name__)
 
+UNEXPECTED = "Something went wrong inside the tool; the request may well have been right."
+
 _PROBLEMS_LISTED = 20
 _LONGEST_NAME = 80
 
@@ -64,20 +66,31 @@ def answer_halfturn_error(_request: Request, error: Exception) -> Response:
     return error_answer(status, error.message, field=error.field, hint=error.hint, detail=error.detail)
 
 
-def answer_overflow(_request: Request, _error: Exception) -> Response:
-    """Answer arithmetic that left the range of numbers: a bad request, as any answer that would not be finite is."""
-    return error_answer(
-        422,
-        "The answer would not be finite: a number in the request is too large or too small to calculate with.",
-        hint="Give the values in a unit in which they are neither extremely large nor extremely small.",
-    )
+def explain(error: Exception) -> HalfturnError:
+    """What an error means to whoever asked: itself, if the tool raised it on purpose; else in plain words.
+
+    Arithmetic that left the range of numbers is a bad request, as any answer that would not be finite is. What nobody
+    expected is logged; there must be none.
+    """
+    if isinstance(error, HalfturnError):
+        return error
+    # A decomposition fails only on what has left the range of numbers on the way to it.
+    if isinstance(error, OverflowError | FloatingPointError | np.linalg.LinAlgError):
+        return InputError(
+            "The answer would not be finite: a number in the request is too large or too small to calculate with.",
+            hint="Give the values in a unit in which they are neither extremely large nor extremely small.",
+        )
+    if isinstance(error, RecursionError):
+        return InputError(
+            "The body is nested too deeply to be read.", hint="No call needs more than a few levels of nesting."
+        )
+    _log.error("unexpected error", exc_info=error)
+    return HalfturnError(UNEXPECTED, hint="The server's log has the particulars. Nothing that was kept is lost.")
 
 
-def answer_recursion(_request: Request, _error: Exception) -> Response:
-    """Answer a request that is nested so deeply that it cannot be read."""
-    return error_answer(
-        422, "The body is nested too deeply to be read.", hint="No call needs more than a few levels of nesting."
-    )
+def answer_explained(request: Request, error: Exception) -> Response:
+    """Answer an error that ``explain`` puts into words."""
+    return answer_halfturn_error(request, explain(error))
 
 
 def answer_http_error(request: Request, error: Exception) -> Response:
@@ -204,11 +217,8 @@ def install(app: FastAPI) -> None:
     app.add_exception_handler(HalfturnError, answer_halfturn_error)
     app.add_exception_handler(RequestValidationError, answer_invalid_request)
     app.add_exception_handler(HTTPException, answer_http_error)
-    app.add_exception_handler(RecursionError, answer_recursion)
-    app.add_exception_handler(OverflowError, answer_overflow)
-    app.add_exception_handler(FloatingPointError, answer_overflow)
-    # A decomposition fails only on what has left the range of numbers on the way to it.
-    app.add_exception_handler(np.linalg.LinAlgError, answer_overflow)
+    for kind in (RecursionError, OverflowError, FloatingPointError, np.linalg.LinAlgError):
+        app.add_exception_handler(kind, answer_explained)
 
 
 class LastResort:
@@ -240,7 +250,7 @@ class LastResort:
             _log.exception("unexpected error at %s", scope.get("path"))
             answer = error_answer(
                 500,
-                "Something went wrong inside the tool; the request may well have been right.",
+                UNEXPECTED,
                 hint="The server's log has the particulars. Nothing that was kept is lost.",
             )
             await answer(scope, receive, send)

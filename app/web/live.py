@@ -17,7 +17,7 @@ import numpy as np
 from fastapi import APIRouter, WebSocket, WebSocketDisconnect
 from pydantic import Field, TypeAdapter, ValidationError
 
-from app.errors import HalfturnError, InputError
+from app.errors import InputError
 from app.store.canonical import plain
 from app.store.document import SampleDocument, current_property
 from app.tensor.pose import read_pose
@@ -25,6 +25,7 @@ from app.tensor.principal import find_principal
 from app.tensor.surface import SurfaceKind
 from app.web.answers import JsonAnswer
 from app.web.bodies import parse_object
+from app.web.error_answers import explain
 from app.web.followed import find_followed
 from app.web.kept import crystal_for, crystal_of, entry_of, print_own_unit, tensor_of
 from app.web.parts import Number, Part, Pose, Text, ThreeByThree
@@ -50,6 +51,7 @@ from app.web.turning import (
 router = APIRouter()
 
 MOST_SUBJECTS = 32
+LARGEST_SEQ = 2**53
 
 
 class TensorMessage(Part):
@@ -231,7 +233,8 @@ def read_message(text: str) -> TensorMessage | SurfaceMessage | TurnMessage:
     """A message in one of its three shapes. Raises InputError."""
     content = parse_object(text.encode())
     models: dict[Any, Any] = {"tensor": TensorMessage, "surface": SurfaceMessage, "turn": TurnMessage}
-    model = models.get(content.get("type"))
+    kind = content.get("type")
+    model = models.get(kind) if isinstance(kind, str) else None
     if model is None:
         raise InputError("The message has no known type.", field="type", hint="It is tensor, surface or turn.")
     try:
@@ -267,17 +270,29 @@ async def live(socket: WebSocket) -> None:
             text = await socket.receive_text()
         except (WebSocketDisconnect, KeyError):
             return
-        seq = None
         try:
             answer = answer_message(socket, text)
-        except HalfturnError as error:
-            try:
-                seq = json.loads(text).get("seq")
-            except (ValueError, AttributeError):
-                seq = None
-            body = {"message": error.message, "field": error.field, "hint": error.hint}
-            answer = {"type": "error", "seq": seq, "error": body}
-        if isinstance(answer, bytes):
-            await socket.send_bytes(answer)
+            sent = answer if isinstance(answer, bytes) else write_answer(answer)
+        except Exception as error:
+            # Nothing that a message holds may end the channel: the page would lose the turn under its hand.
+            told = explain(error)
+            body = {"message": told.message, "field": told.field, "hint": told.hint}
+            sent = write_answer({"type": "error", "seq": _find_seq(text), "error": body})
+        if isinstance(sent, bytes):
+            await socket.send_bytes(sent)
         else:
-            await socket.send_text(bytes(JsonAnswer(answer).body).decode())
+            await socket.send_text(sent)
+
+
+def write_answer(answer: dict[str, Any]) -> str:
+    """An answer as strict JSON. Raises InputError where a number in it is not finite."""
+    return bytes(JsonAnswer(answer).body).decode()
+
+
+def _find_seq(text: str) -> int | None:
+    """The sequence number of a message that could not be answered, so that the page knows which."""
+    try:
+        seq = json.loads(text).get("seq")
+    except (ValueError, AttributeError, RecursionError):
+        return None
+    return seq if isinstance(seq, int) and abs(seq) < LARGEST_SEQ else None

@@ -33,7 +33,7 @@ from app.web.samples import store_of
 from app.web.stereogram import Picture, draw_stereogram
 from app.web.stereogram_view import list_directions, list_poles
 
-router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.ERROR_RESPONSES)
+router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.KEPT_ERROR_RESPONSES)
 
 
 RANKED: Final = 8

@@ -28,7 +28,7 @@ from app.web.pages import templates
 from app.web.readings_view import fit_kept, require_property
 from app.web.samples import store_of
 
-router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.ERROR_RESPONSES)
+router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.KEPT_ERROR_RESPONSES)
 
 HELD_BACK = 0.995
 """A weight below it is told."""

@@ -27,7 +27,7 @@ from app.web.readings_view import GRID_COLUMNS, describe_kept, require_property
 from app.web.requests import MAX_READINGS
 from app.web.samples import save_change, store_of
 
-router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.ERROR_RESPONSES)
+router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.KEPT_ERROR_RESPONSES)
 
 
 class Row(Part):

@@ -39,6 +39,14 @@ ERROR_RESPONSES: dict[int | str, dict[str, Any]] = {
     413: {"model": ErrorAnswer, "description": "The body is over 8 MiB"},
     422: {"model": ErrorAnswer, "description": "A bad request: what is wrong, where, and what to do"},
 }
+
+KEPT_ERROR_RESPONSES: dict[int | str, dict[str, Any]] = {
+    **ERROR_RESPONSES,
+    404: {"model": ErrorAnswer, "description": "There is no such sample, revision or other kept thing"},
+    409: {"model": ErrorAnswer, "description": "The change was made against an old revision"},
+    503: {"model": ErrorAnswer, "description": "Kept work cannot be read or written"},
+}
+"""Of the calls that read or change kept work."""
 """For every router's ``responses``."""
 
 

@@ -20,14 +20,7 @@ from app.web.editing import apply_change
 from app.web.kept import print_own_unit, render_entry, render_sample
 from app.web.pictures import draw_quadric
 
-_ERRORS: dict[int | str, dict[str, Any]] = {
-    **responses.ERROR_RESPONSES,
-    404: {"model": responses.ErrorAnswer, "description": "There is no such sample or revision"},
-    409: {"model": responses.ErrorAnswer, "description": "The change was made against an old revision"},
-    503: {"model": responses.ErrorAnswer, "description": "Kept work cannot be read or written"},
-}
-
-router = APIRouter(prefix="/api", route_class=StrictRoute, responses=_ERRORS)
+router = APIRouter(prefix="/api", route_class=StrictRoute, responses=responses.KEPT_ERROR_RESPONSES)
 
 
 def store_of(request: Request) -> Store:

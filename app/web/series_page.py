@@ -30,7 +30,7 @@ from app.web.series_view import change_series, describe_series, fit_kept_series,
 from app.web.tensor_series_view import describe_tensor_series
 
 page_router = APIRouter(include_in_schema=False)
-router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.ERROR_RESPONSES)
+router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.KEPT_ERROR_RESPONSES)
 
 EXPANSION: str = "thermal_expansion"
 MOST_FACES = 12

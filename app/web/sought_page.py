@@ -24,7 +24,7 @@ from app.web.sought import take_conditions
 from app.web.stereogram import Mark, Picture, Trace, draw_stereogram
 from app.web.stereogram_view import list_poles
 
-router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.ERROR_RESPONSES)
+router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.KEPT_ERROR_RESPONSES)
 
 NEAR = 3.0
 MOST_NEAR = 16

@@ -27,7 +27,7 @@ from app.web.stages import find_stage
 
 FloatArray = npt.NDArray[np.float64]
 
-router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.ERROR_RESPONSES)
+router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.KEPT_ERROR_RESPONSES)
 
 SHOWN = 8
 PREDICTED_INDEX = 3

@@ -22,7 +22,7 @@ from app.web.parts import Part
 from app.web.samples import store_of
 from app.web.stage_shapes import Angle, LabVector, StageAxis
 
-router = APIRouter(prefix="/api", route_class=StrictRoute, responses=responses.ERROR_RESPONSES)
+router = APIRouter(prefix="/api", route_class=StrictRoute, responses=responses.KEPT_ERROR_RESPONSES)
 
 KEY = "stages"
 MOST_STAGES = 40

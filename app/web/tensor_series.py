@@ -28,7 +28,7 @@ from app.web.tensor_series_view import (
     is_empty,
 )
 
-router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.ERROR_RESPONSES)
+router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.KEPT_ERROR_RESPONSES)
 
 
 class TensorSeriesChange(Part):

@@ -24,7 +24,7 @@ from app.web.parts import Number, Part
 from app.web.readings_closer import fit_shown
 from app.web.samples import store_of
 
-router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.ERROR_RESPONSES)
+router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.KEPT_ERROR_RESPONSES)
 
 
 class TwinRequest(Part):
