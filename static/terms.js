@@ -10,7 +10,7 @@ note.className = "term-note";
 note.popover = "auto";
 note.tabIndex = -1;
 note.setAttribute("role", "note");
-document.body.append(note);
+(document.querySelector("main") ?? document.body).append(note);
 
 /** @param {HTMLElement} term */
 function place(term) {

@@ -24,7 +24,7 @@ export function countWaiting(show, later = setTimeout, never = clearTimeout) {
 
 const word = typeof document === "undefined" ? null : Object.assign(document.createElement("p"), { className: "waiting", hidden: true });
 word?.setAttribute("role", "status");
-if (word) document.body.append(word);
+if (word) (document.querySelector("main") ?? document.body).append(word);
 const waiting = countWaiting((shown) => {
   if (!word) return;
   word.textContent = shown ? "Working …" : "";

@@ -14,7 +14,7 @@ from typing import Final, Literal
 
 import numpy as np
 import numpy.typing as npt
-from scipy.linalg import qr, solve_triangular
+from scipy.linalg import qr
 
 from app.errors import InputError
 from app.readings.criterion import Criterion
@@ -145,7 +145,7 @@ def build_gain(taken: Rows, candidates: Rows, criterion: Criterion) -> Gain:
     order = np.argsort(-np.max(np.abs(inside), axis=1), kind="stable")
     triangle, pivots = qr(inside[order], mode="r", pivoting=True)
     rank = seen.shape[1]
-    transform = seen[:, pivots] @ solve_triangular(triangle[:rank], np.eye(rank))
+    transform = seen[:, pivots] @ np.linalg.solve(triangle[:rank, :rank], np.eye(rank))
     rows = candidates.whitened @ transform
     # Their scale is a constant factor of the criterion.
     wanted = criterion.functionals / np.max(np.abs(criterion.functionals))

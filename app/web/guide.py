@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
 from functools import cache
 from typing import Any, Final
 
@@ -12,42 +11,13 @@ from app.crystal.crystal import build_crystal
 from app.crystal.frame import list_letter_rules
 from app.errors import NotFoundError
 from app.web.drawing import draw_frame
+from app.web.guide_pages import PAGES, Page, find_page
 from app.web.pages import templates
 
 router = APIRouter(include_in_schema=False)
 
 EXAMPLE_CELL: Final = (7.1, 8.4, 6.2, 84.0, 108.0, 97.0)
 """Invented, triclinic: in it no two of the 36 frames are one."""
-
-
-@dataclass(frozen=True)
-class Page:
-    """A page of the guide: its address, its title, and the question that it answers."""
-
-    slug: str
-    title: str
-    question: str
-
-
-PAGES: Final = (
-    Page("walk", "The job, once through", "How do I get from a boule to a part that is cut right?"),
-    Page("crystal", "Crystal and frame", "To which axes does a number refer?"),
-    Page("tensor", "The tensor and its locked cells", "Which of the nine cells does symmetry leave free?"),
-    Page("picture", "The picture and turning", "What do the surfaces show, and what moves when I drag?"),
-    Page("readings", "From readings to a tensor", "What do my bars say, and how sure is it?"),
-    Page("closer", "Looking closer", "Can I trust the fit, the symmetry and every reading?"),
-    Page("next-cuts", "Next cuts", "Which bar should I cut next?"),
-    Page("bars", "Bars, faces and twins", "What did I really measure on this piece?"),
-    Page("consequences", "What follows for a part", "What will the part do?"),
-    Page("orientation", "Sightings and stage", "How does the crystal sit, and how do I bring a plane to the blade?"),
-    Page("search", "Finding a direction, and miscut", "Where is the wanted value, and what does a miscut cost?"),
-    Page("series", "Series", "How does it all move with temperature?"),
-    Page("hand-over", "Sheets, files and kept work", "What goes to the workshop, and where is my work?"),
-    Page("published", "Held against print", "Does it get what was printed elsewhere?"),
-    Page("limits", "What it does not do", "Where must I not trust it?"),
-    Page("changes", "Changes", "What is new?"),
-)
-_BY_SLUG: Final = {page.slug: page for page in PAGES}
 
 
 @cache
@@ -69,7 +39,7 @@ def guide(request: Request) -> Response:
 @router.api_route("/guide/{slug}", methods=["GET", "HEAD"])
 def guide_page(slug: str, request: Request) -> Response:
     """One page. Raises NotFoundError for any other."""
-    page = _BY_SLUG.get(slug)
+    page = find_page(slug)
     if page is None:
         raise NotFoundError("The guide has no such page.", hint="Its contents are at /guide.")
     return _show(request, f"guide/{page.slug}.html", page)

@@ -91,7 +91,8 @@ class PutPart(Part):
 
     axis: Literal["x", "y", "z"]
     on: Text
-    toward: tuple[Literal["x", "y", "z"], Text] | None = None
+    # A list of JSON is taken for the pair; strictly it would be none.
+    toward: tuple[Literal["x", "y", "z"], Text] | None = Field(None, strict=False)
 
 
 class TurnMessage(Part):

@@ -104,7 +104,17 @@ def _pose(subject: Subject, kept: Kept) -> Pose:
         return read_pose(kept.document.plain()["pose"], subject.crystal)
 
 
-@router.get("/tensors.csv", summary="Every tensor of a sample as CSV, with σ, frames, conditions and covariances")
+def _describe_file(media_type: str) -> dict[str, Any]:
+    """What the OpenAPI document says of an answer that is a file."""
+    content = {media_type.split(";")[0]: {"schema": {"type": "string", "format": "binary"}}}
+    return {"response_class": Response, "responses": {200: {"description": "The file", "content": content}}}
+
+
+@router.get(
+    "/tensors.csv",
+    summary="Every tensor of a sample as CSV, with σ, frames, conditions and covariances",
+    **_describe_file(CSV),
+)
 def tensors_csv(sample_id: str, request: Request, revision: int | None = Revision) -> Response:
     """One number per row: nine cells in the crystal frame and in the specimen frame, free cells, covariance."""
     kept = _open(request, sample_id, revision, None)
@@ -112,7 +122,11 @@ def tensors_csv(sample_id: str, request: Request, revision: int | None = Revisio
     return FileAnswer(write_tensors(kept.document), CSV, kept.document.name, "tensors.csv")
 
 
-@router.get("/readings.csv", summary="The readings of a property as CSV, which the table of readings takes back")
+@router.get(
+    "/readings.csv",
+    summary="The readings of a property as CSV, which the table of readings takes back",
+    **_describe_file(CSV),
+)
 def readings_csv(
     sample_id: str, request: Request, revision: int | None = Revision, property_id: str | None = PropertyId
 ) -> Response:
@@ -122,7 +136,11 @@ def readings_csv(
     return FileAnswer(write_readings_in_use(kept.document, shown), CSV, kept.document.name, "readings.csv")
 
 
-@router.get("/cell.cif", summary="The cell with its standard uncertainties and the group, as CIF")
+@router.get(
+    "/cell.cif",
+    summary="The cell with its standard uncertainties and the group, as CIF",
+    **_describe_file(CIF),
+)
 def cell_cif(sample_id: str, request: Request, revision: int | None = Revision) -> Response:
     """The crystal frame stands in a comment, since a CIF has no name for it; refused for a limiting group."""
     kept = _open(request, sample_id, revision, None)
@@ -171,7 +189,11 @@ def surface(
     return JsonAnswer({**about, **describe_solid(solid)})
 
 
-@router.get("/surface.stl", summary="The surface of a tensor as a solid in mm, binary STL")
+@router.get(
+    "/surface.stl",
+    summary="The surface of a tensor as a solid in mm, binary STL",
+    **_describe_file(STL),
+)
 def surface_stl(
     sample_id: str,
     request: Request,
@@ -188,7 +210,11 @@ def surface_stl(
     return _answer_solid(write_stl(solid), STL, kept, solid, "stl")
 
 
-@router.get("/surface.glb", summary="The surface of a tensor to look at, binary glTF 2.0")
+@router.get(
+    "/surface.glb",
+    summary="The surface of a tensor to look at, binary glTF 2.0",
+    **_describe_file(GLB),
+)
 def surface_glb(
     sample_id: str,
     request: Request,
@@ -221,7 +247,11 @@ def _describe(kept: Kept, shown: KeptProperty) -> Words:
     return Words(kept.document.name, ", ".join(part for part in parts if part), below)
 
 
-@router.get("/picture.svg", summary="The picture of the front page as SVG, at a chosen size")
+@router.get(
+    "/picture.svg",
+    summary="The picture of the front page as SVG, at a chosen size",
+    **_describe_file(SVG),
+)
 def picture_svg(
     sample_id: str,
     request: Request,
@@ -269,7 +299,11 @@ def _find_surface(kept: Kept, link: Link) -> SurfaceKind:
     return found
 
 
-@router.get("/stereogram.svg", summary="The stereogram of a tensor as SVG, at a chosen size")
+@router.get(
+    "/stereogram.svg",
+    summary="The stereogram of a tensor as SVG, at a chosen size",
+    **_describe_file(SVG),
+)
 def stereogram_svg(
     sample_id: str,
     request: Request,
@@ -289,7 +323,11 @@ def stereogram_svg(
     return FileAnswer(drawn, SVG, kept.document.name, "stereogram.svg")
 
 
-@router.get("/report.html", summary="One file that opens with no server: numbers, pictures, and the scene")
+@router.get(
+    "/report.html",
+    summary="One file that opens with no server: numbers, pictures, and the scene",
+    **_describe_file(HTML),
+)
 def report_html(
     sample_id: str,
     request: Request,

@@ -16,6 +16,7 @@ import numpy.typing as npt
 
 from app.web.block import draw_block
 from app.web.contour import trace_contours
+from app.web.label_places import place_labels
 from app.web.marks import LINE_LIFT, Marks, Tip, find_marks
 from app.web.marks import LONGEST_EDGE as LONGEST_EDGE
 from app.web.marks import SPINE as SPINE
@@ -72,7 +73,7 @@ def draw_overlay(
     _draw_numbers([number for number, flag in zip(numbers, hidden_numbers, strict=True) if not flag], texts)
     _draw_marks(marks, marks.points @ screen.T, hidden, shapes, texts)
     shapes += [entry for entry in block if entry["layer"] == "front"]
-    return {"shapes": shapes, "texts": texts}
+    return {"shapes": shapes, "texts": place_labels(texts)}
 
 
 @dataclass(frozen=True)

@@ -15,6 +15,7 @@ from app.crystal.frame import list_letter_rules
 from app.store.revisions import Kept
 from app.version import VERSION
 from app.web.group_choice import list_choices
+from app.web.guide_pages import link_page
 from app.web.kept import render_entry, render_sample
 from app.web.keys import list_keys
 from app.web.resources import plotly_version, templates_folder
@@ -27,7 +28,6 @@ router = APIRouter(include_in_schema=False)
 
 PAGES = (("tensor", "Tensor"), ("readings", "Readings"), ("cut", "Cut"), ("series", "Series"), ("sheet", "Sheet"))
 """The pages of a sample that are there, in the order of the way through it."""
-
 
 GUIDE_OF = {"tensor": "tensor", "readings": "readings", "cut": "orientation", "series": "series", "sheet": "hand-over"}
 """The page of the guide that each page of a sample leads to."""
@@ -48,6 +48,7 @@ templates = Jinja2Templates(directory=templates_folder(), context_processors=[_w
 templates.env.add_extension(HashedAddresses)
 templates.env.filters["typeset"] = typeset
 templates.env.globals["term"] = link_term
+templates.env.globals["guide"] = link_page
 
 
 def embed_json(content: Any) -> Markup:

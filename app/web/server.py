@@ -29,6 +29,7 @@ from app.web import (
     readings_page,
     readings_table,
     samples,
+    section_page,
     seek_calls,
     series_calls,
     series_page,
@@ -96,6 +97,7 @@ def create_app(data_dir: Path | None = None) -> FastAPI:
     app.include_router(part_sheet.router)
     app.include_router(cut_page.page_router)
     app.include_router(consequences_page.router)
+    app.include_router(section_page.router)
     app.include_router(cut_page.router)
     app.include_router(spots.router)
     app.include_router(stages.router)

@@ -15,7 +15,8 @@ import pytest
 from fastapi.testclient import TestClient
 
 from app.cli import build_parser
-from app.web.guide import PAGES, draw_rules
+from app.web.guide import draw_rules
+from app.web.guide_pages import PAGES
 from app.web.server import create_app
 
 
@@ -154,3 +155,17 @@ def test_there_is_a_drawing_of_every_rule(client: TestClient) -> None:
 
 def test_there_is_no_other_page(client: TestClient) -> None:
     assert client.get("/guide/nothing").status_code == 404
+
+
+def test_every_panel_leads_to_its_page(client: TestClient) -> None:
+    sample = client.get("/api/samples").json()[0]["id"]
+    reached = set()
+    for page in ("tensor", "readings", "cut", "series"):
+        text = client.get(f"/samples/{sample}/{page}").text
+        questions = re.findall(r'<p class="asks">(.*?)</p>', text, flags=re.S)
+        assert len(questions) > 1
+        for question in questions:
+            found = re.findall(r'href="/guide/([a-z-]+)"', question)
+            assert len(found) == 1, question
+            reached.update(found)
+    assert reached >= {"tensor", "picture", "readings", "closer", "next-cuts", "bars", "consequences", "orientation"}
