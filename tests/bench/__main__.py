@@ -6,7 +6,18 @@ import sys
 
 import pytest
 
-OPTIONS = ["-o", "python_files=bench_*.py", "-p", "no:cacheprovider", "-q", "-s", "--benchmark-quiet"]
+# In one process and with the plug-in that the tests do without.
+OPTIONS = [
+    "-o",
+    "addopts=--import-mode=importlib",
+    "-o",
+    "python_files=bench_*.py",
+    "-p",
+    "no:cacheprovider",
+    "-q",
+    "-s",
+    "--benchmark-quiet",
+]
 NAMED = any(argument.startswith("tests/bench") for argument in sys.argv[1:])
 
 if __name__ == "__main__":
