@@ -16,6 +16,7 @@ from app.web import (
     consequences_page,
     cut_page,
     error_answers,
+    error_page,
     frame_question,
     glossary_page,
     guide,
@@ -83,6 +84,7 @@ def create_app(data_dir: Path | None = None) -> FastAPI:
     app.state.data_dir = data_dir
     app.state.store = None if data_dir is None else open_store(data_dir)
     error_answers.install(app)
+    error_page.install(app)
     app.include_router(pages.router)
     app.include_router(glossary_page.router)
     app.include_router(samples.router)
