@@ -6,6 +6,7 @@ import { installViews } from "./matrix-views.js";
 import { explainPosed, makeEditable, showPose, showPoses, showProperty, showSubject, showSurfaceWords } from "./matrix.js";
 import { drawOverlay } from "./overlay.js";
 import { currentSample, edit, step } from "./page.js";
+import { installProbe } from "./probe.js";
 import { makeScene, unpack } from "./scene.js";
 import * as turns from "./turn-state.js";
 
@@ -20,9 +21,10 @@ function start({ subject, first }) {
   let last = first, waiting = /** @type {any} */ (null), saving = /** @type {any} */ (null), revision = currentSample().revision;
   const startPose = state.pose;
   const scene = makeScene(byId("plot"), () => { byId("no-picture").hidden = false; });
-  const paint = (/** @type {any} */ answer) => { last = answer; scene.look(answer.camera); showPose(answer); drawOverlay(back, front, answer.overlay); tellPainted(answer); };
+  const paint = (/** @type {any} */ answer) => { last = answer; scene.look(answer.camera); showPose(answer); drawOverlay(back, front, answer.overlay); probe.show(answer.probe); tellPainted(answer); };
   // Whoever shows or links what is drawn hears of every picture.
   const tellPainted = (/** @type {any} */ answer) => document.dispatchEvent(new CustomEvent("painted", { detail: { answer, surface: state.surface, at: follow.at() } }));
+  const probe = installProbe(figure, () => request(), () => unit());
   const paintSubject = (/** @type {any} */ given) => { subject = given; showSubject(given); showProperty(currentSample().derived.property, given.unit); showSurfaceWords(given, state.surface); showFollowed(given.followed); };
   const live = openLive({
     onOpen: () => askSubject(),
@@ -50,7 +52,7 @@ function start({ subject, first }) {
   const follow = followWith(askSubject);
   const fault = (/** @type {string} */ text) => { byId("turn-fault").textContent = text; byId("turn-fault").hidden = !text; };
   function request(more = {}, keeps = false) {
-    const asked = turns.ask(state, more);
+    const asked = turns.ask(state, { ...probe.asked(), ...more });
     state = asked.state;
     if (keeps) waiting = { seq: state.seq };
     live.turn(asked.message);
@@ -76,6 +78,7 @@ function start({ subject, first }) {
   figure.addEventListener("pointerdown", (/** @type {PointerEvent} */ event) => {
     if (event.button || !(/** @type {Element} */ (event.target).closest(".stage"))) return;
     const what = /** @type {any} */ (event.target).dataset?.holdOn ?? "ground";
+    if (probe.takes(event)) return;
     state = turns.press(state, what);
     from = [event.clientX, event.clientY];
     figure.setPointerCapture(event.pointerId);

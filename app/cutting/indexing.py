@@ -18,7 +18,9 @@ FloatArray = npt.NDArray[np.float64]
 
 HIGHEST_INDEX: Final = 5
 MOST_NORMALS: Final = 60
-MOST_PAIRS: Final = 12_000
+MOST_PAIRS: Final = 8_000
+MOST_WORK: Final = 1e8
+"""Turns times spots times planes: of very many, the turns whose two angles fit best are tried. 1e8 takes seconds."""
 PAIRS_TRIED: Final = 5
 SAME_TURN: Final = 0.2
 """Degrees within which two rotations are one."""
@@ -96,13 +98,14 @@ def _list_turns(
     # A first plane stands for all that a proper operation makes equal to it.
     first = _list_representatives(crystal, every, half)
     angles = measure_angles(every[first][:, None], every[None, :])
+    most = min(MOST_PAIRS, int(MOST_WORK / (len(normals) * len(every)))) // len(order)
     turns: list[FloatArray] = []
     for place in order.tolist():
         seen = normals[[one[place], two[place]]]
         wanted = float(measure_angles(seen[0], seen[1]))
         pairs = np.argwhere(np.abs(angles - wanted) <= 2.0 * tolerance)
         misses = np.abs(angles[pairs[:, 0], pairs[:, 1]] - wanted)
-        pairs = pairs[np.argsort(misses, kind="stable")][: MOST_PAIRS // len(order)]
+        pairs = pairs[np.argsort(misses, kind="stable")][:most]
         turns += [fit_rotation(every[[first[a], b]], seen, np.ones(2)) for a, b in pairs.tolist()]
     return turns
 

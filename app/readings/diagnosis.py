@@ -29,7 +29,7 @@ MAD_FACTOR: Final = 0.6744897501960817
 """Median of the absolute value of a standard normal variable."""
 MAX_ROUNDS: Final = 60
 SETTLED: Final = 1e-9
-MOST_READINGS: Final = 200
+MOST_READINGS: Final = 100
 
 
 @dataclass(frozen=True)

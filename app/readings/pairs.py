@@ -4,12 +4,14 @@ from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from typing import Final
 
 import numpy as np
 import numpy.typing as npt
 from scipy.special import erfc
 
 from app.crystal.crystal import Crystal
+from app.errors import InputError
 from app.readings.prediction import predict
 from app.readings.reading import Reading
 from app.readings.reading_set import resolve_readings
@@ -20,6 +22,9 @@ from app.tensor.pose import IDENTITY, Pose
 FloatArray = npt.NDArray[np.float64]
 
 ALIKE = 1e-6
+
+MOST_READINGS: Final = 500
+"""Among so many there are 125,000 pairs, and the covariance of all takes tenths of a second."""
 
 
 @dataclass(frozen=True)
@@ -52,31 +57,41 @@ def compare_pairs(
 
     Args:
         matrix: the tensor (3, 3) at which tilts and batches are weighed.
+
+    Raises:
+        InputError: more readings than ``MOST_READINGS``, whose whole covariance would be too large.
     """
+    if len(readings) > MOST_READINGS:
+        raise InputError(
+            f"Equivalent readings are compared among up to {MOST_READINGS} readings, not {len(readings)}.",
+            field="readings",
+        )
     taken = resolve_readings(crystal, kind, readings, batches=batches, pose=pose)
     prediction = predict(taken, matrix)
     whitening = build_whitening(taken, matrix, prediction.values)
+    covariance = None if taken.sigma is None else _compute_covariance(whitening, len(readings))
+    known = np.array([reading.kind if reading.kind in ("along", "rod") else "" for reading in readings])
     pairs = []
     for first in range(len(readings)):
-        for second in range(first + 1, len(readings)):
-            if readings[first].kind != readings[second].kind or readings[first].kind not in ("along", "rod"):
-                continue
-            one, two = taken.first[first], taken.first[second]
-            images = np.abs(crystal.rotations @ one @ two)
-            same_line = abs(float(one @ two)) > 1.0 - ALIKE
-            if same_line or float(np.max(images)) < 1.0 - ALIKE:
-                continue
+        if not known[first]:
+            continue
+        later = taken.first[first + 1 :]
+        alike = np.max(np.abs(crystal.rotations @ taken.first[first] @ later.T), axis=0) >= 1.0 - ALIKE
+        same_line = np.abs(later @ taken.first[first]) > 1.0 - ALIKE
+        for offset in np.flatnonzero(alike & ~same_line & (known[first + 1 :] == known[first])).tolist():
+            second = first + 1 + offset
             difference = float(taken.values[first] - taken.values[second])
-            sigma = _measure_sigma(whitening, len(readings), first, second) if taken.sigma is not None else None
-            p = None if sigma is None else float(erfc(abs(difference) / sigma / np.sqrt(2.0)))
+            sigma = p = None
+            if covariance is not None:
+                variance = covariance[first, first] + covariance[second, second] - 2.0 * covariance[first, second]
+                sigma = float(np.sqrt(variance))
+                p = float(erfc(abs(difference) / sigma / np.sqrt(2.0)))
             pairs.append(Pair(first, second, difference, sigma, p))
     return tuple(sorted(pairs, key=lambda pair: pair.p_value if pair.p_value is not None else -abs(pair.difference)))
 
 
-def _measure_sigma(whitening: Whitening, count: int, first: int, second: int) -> float:
-    """The standard deviation of a difference under the whole V: V c by solving for the whitened unit difference."""
+def _compute_covariance(whitening: Whitening, count: int) -> FloatArray:
+    """The whole V, shape (n, n): the inverse of WᵀW."""
     root = whitening.whiten(np.eye(count))
-    covariance = np.linalg.inv(root.T @ root)
-    contrast = np.zeros(count)
-    contrast[first], contrast[second] = 1.0, -1.0
-    return float(np.sqrt(contrast @ covariance @ contrast))
+    covariance: FloatArray = np.asarray(np.linalg.inv(root.T @ root), dtype=np.float64)
+    return covariance

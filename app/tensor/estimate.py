@@ -120,7 +120,7 @@ def check_covariance(covariance: npt.ArrayLike, count: int) -> FloatArray:
     scale = np.outer(deviations, deviations)
     if np.any(np.abs(matrix - matrix.T) > 1e-9 * (scale + np.max(np.abs(matrix)) * 1e-12)):
         raise InputError("The covariance is not symmetric.", field="covariance", hint="Entry i j must equal entry j i.")
-    symmetric = (matrix + matrix.T) / 2.0
+    symmetric = matrix / 2.0 + matrix.T / 2.0
     safe = np.where(deviations > 0, deviations, 1.0)
     smallest = float(np.min(np.linalg.eigvalsh(symmetric / np.outer(safe, safe))))
     if np.any(np.diag(matrix) < 0) or smallest < -1e-9:

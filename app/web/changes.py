@@ -9,7 +9,7 @@ from pydantic_core import PydanticCustomError
 
 from app.tensor.kind import Intrinsic, Parity
 from app.web.parts import Number, Part, Pose, Text, ThreeByThree
-from app.web.requests import MAX_FREE_CELLS, MAX_READINGS, Crystal
+from app.web.requests import MAX_FREE_CELLS, MAX_KEPT_READINGS, Crystal
 
 LongText = Annotated[str, StringConstraints(max_length=20_000)]
 Typed = Annotated[str, StringConstraints(max_length=200)]
@@ -51,7 +51,7 @@ class Change(Part):
     pose: Pose | None = None
     poses: dict[Text, Pose | None] | None = None
     part: list[Number] | None = Field(None, min_length=3, max_length=3, description="mm along x, y and z")
-    readings: list[dict[str, Any]] | None = Field(None, max_length=MAX_READINGS)
+    readings: list[dict[str, Any]] | None = Field(None, max_length=MAX_KEPT_READINGS)
     batches: dict[Text, Number] | None = None
     name: Typed | None = None
     notes: LongText | None = None

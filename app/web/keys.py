@@ -36,6 +36,7 @@ class KeyEntry:
 
 SAMPLE_PAGES: Final = "the pages of a sample"
 PICTURE: Final = "in the picture"
+PROBE: Final = "on the probe"
 FIELD: Final = "in a field"
 
 KEYS: Final[tuple[KeyEntry, ...]] = (
@@ -69,6 +70,15 @@ KEYS: Final[tuple[KeyEntry, ...]] = (
     ),
     KeyEntry("reset", ("Home",), ("Home",), "go back to the start", "tensor", PICTURE),
     KeyEntry("catch", ("C",), ("c",), "gentle catch on or off", "tensor", PICTURE, letter=True),
+    KeyEntry("probe", ("P",), ("p",), "put the probe on the surface, or away", "tensor", letter=True),
+    KeyEntry(
+        "move-probe",
+        ("←", "→", "↑", "↓"),
+        ("ArrowLeft", "ArrowRight", "ArrowUp", "ArrowDown"),
+        "move the probe by a degree, with Shift by ten",
+        "tensor",
+        PROBE,
+    ),
     KeyEntry("take-cell", ("Enter",), ("Enter",), "take the number typed into a cell", "tensor", FIELD),
     KeyEntry("leave-cell", ("Esc",), ("Escape",), "leave the cell as it was", "tensor", FIELD),
     KeyEntry(

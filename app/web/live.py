@@ -30,6 +30,7 @@ from app.web.followed import find_followed
 from app.web.kept import crystal_for, crystal_of, entry_of, print_own_unit, tensor_of
 from app.web.parts import Number, Part, Pose, Text, ThreeByThree
 from app.web.posed import describe_pose, describe_subject
+from app.web.probing import ProbePart, probe_surface
 from app.web.scene import Subject, pack_scene
 from app.web.settling import find_settling, fingerprint_readings
 from app.web.showing import turn_part
@@ -112,6 +113,7 @@ class TurnMessage(Part):
     way: Number | None = Field(
         None, ge=0, le=1, description="part of the turn from the crystal frame to the pose to show; the pose stays"
     )
+    probe: ProbePart | None = Field(None, description="what the tensor does along a direction; none where it is off")
 
 
 _messages: TypeAdapter[TensorMessage | SurfaceMessage | TurnMessage] = TypeAdapter(
@@ -227,6 +229,11 @@ def answer_turn(subject: Subject, message: TurnMessage) -> dict[str, Any]:
         answer["pose"] = {**answer["pose"], "kept": kept}
     else:
         answer = describe_pose(subject, message.surface, pose, kept, view, caught)
+    if message.probe is not None:
+        shown = np.array(answer["pose"]["matrix"])
+        found = probe_surface(subject, subject.scene(message.surface), view.screen(shown), message.probe)
+        answer["overlay"]["shapes"] += found.pop("shapes")
+        answer["probe"] = found
     return {"type": "state", "hash": subject.key, "seq": message.seq, "way": message.way, **answer}
 
 

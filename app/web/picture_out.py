@@ -235,7 +235,8 @@ def _draw_lines(scene: Scene, screen: FloatArray) -> list[str]:
     if not scene.lines:
         return []
     points = [line.points * scene.factor for line in scene.lines]
-    seen = ~scene.find_hidden(np.concatenate(points) * 1.01, screen[2])
+    # They lie a little outside the surface as they are, so that it does not hide its own.
+    seen = ~scene.find_hidden(np.concatenate(points), screen[2])
     paths: dict[str, list[str]] = {}
     start = 0
     for line, heavy, world in zip(scene.lines, scene.heavy, points, strict=True):

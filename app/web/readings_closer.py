@@ -13,6 +13,7 @@ from app.errors import HalfturnError
 from app.readings.diagnosis import MOST_READINGS, fit_robustly, measure_influence
 from app.readings.fit import Fit
 from app.readings.ladder import Ladder, climb_ladder
+from app.readings.pairs import MOST_READINGS as MOST_PAIRED
 from app.readings.pairs import compare_pairs
 from app.readings.reading import Reading
 from app.readings.report import describe_direction
@@ -146,7 +147,7 @@ def _name_reading(reading: Reading) -> str:
 def _describe_pairs(
     crystal: Crystal, kept: Kept, shown: KeptProperty, readings: Sequence[Reading], fit: Fit
 ) -> list[dict[str, str]]:
-    if fit.estimate is None:
+    if fit.estimate is None or len(readings) > MOST_PAIRED:
         return []
     pairs = compare_pairs(
         crystal,

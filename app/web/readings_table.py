@@ -24,7 +24,7 @@ from app.web.kept_readings import keep_table
 from app.web.pages import templates
 from app.web.parts import Part, Pose
 from app.web.readings_view import GRID_COLUMNS, describe_kept, require_property
-from app.web.requests import MAX_READINGS
+from app.web.requests import MAX_KEPT_READINGS
 from app.web.samples import save_change, store_of
 
 router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=responses.KEPT_ERROR_RESPONSES)
@@ -42,7 +42,7 @@ class RowsRequest(Part):
     """All the readings of the current property, and the revision that they were made from."""
 
     parent: int = Field(ge=1)
-    rows: list[Row] = Field(max_length=MAX_READINGS)
+    rows: list[Row] = Field(max_length=MAX_KEPT_READINGS)
     batches: dict[Typed, Typed] = Field({}, description="relative calibration error of each batch, as text")
 
 
@@ -86,6 +86,12 @@ def take_text(sample_id: str, given: TextRequest, request: Request) -> JsonAnswe
 def replace_table(document: SampleDocument, shown: KeptProperty, text: str) -> list[dict[str, Any]]:
     """All readings of the document with a table in place of those in use of one property. Raises InputError."""
     table = read_table(text, unit=shown.unit)
+    if len(table.readings) > MAX_KEPT_READINGS:
+        raise InputError(
+            f"A sample keeps at most {MAX_KEPT_READINGS} readings of a property; the table has {len(table.readings)}.",
+            field="text",
+            hint="Keep means of repeats, or fit the whole table with the call fit.",
+        )
     aside = [entry.plain() for entry in readings_of(document, shown.id) if entry.set_aside is not None]
     return [*_readings_of_others(document, shown), *keep_table(table, shown.id, shown.unit), *aside]
 

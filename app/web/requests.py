@@ -18,6 +18,9 @@ from app.tensor.kind import Intrinsic, Parity
 from app.web.parts import Direction, Directions, Number, Part, Pose, SixNumbers, Text, ThreeByThree
 
 MAX_READINGS = 200_000
+MAX_KEPT_READINGS = 3_000
+"""Of a sample: every page shows all of them, which takes seconds for so many."""
+
 MAX_CIF_CHARACTERS = 8 * 1024 * 1024
 MAX_FREE_CELLS = 9
 

@@ -65,13 +65,13 @@ def describe_section(
         "polar": draw_polar(section, rows, names[1], angle),
         "mohr": draw_circle(section, angle),
         "even": section.even,
-        "largest": print_value(section.largest, sigma and sigma.largest),
-        "smallest": print_value(section.smallest, sigma and sigma.smallest),
+        "largest": print_value(section.largest, sigma.largest if sigma else None),
+        "smallest": print_value(section.smallest, sigma.smallest if sigma else None),
         "largest_at": _print_turn(section.turn, sigma.turn if sigma else None),
         "smallest_at": _print_turn(section.turn + math.pi / 2.0, sigma.turn if sigma else None),
-        "mean": print_value(section.mean, sigma and sigma.mean),
-        "radius": print_value(section.radius, sigma and sigma.radius),
-        "shift": None if _is_nothing(section) else print_value(section.shift, sigma and sigma.shift),
+        "mean": print_value(section.mean, sigma.mean if sigma else None),
+        "radius": print_value(section.radius, sigma.radius if sigma else None),
+        "shift": None if _is_nothing(section) else print_value(section.shift, sigma.shift if sigma else None),
         "zeros": [_print_turn(turn, None) for turn in section.find_zeros()],
         "rows": [
             {"name": typeset_indices(name), "at": _print_turn(_angle_of(section, vector), None), "value": value}
@@ -159,7 +159,7 @@ def draw_polar(section: Section, rows: list[tuple[str, FloatArray]], zero: str, 
     curve = np.stack([middle + radii * np.cos(angles), middle - radii * np.sin(angles)], axis=-1)
     parts = [f'<circle class="section-ring" cx="{middle:g}" cy="{middle:g}" r="{RADIUS:g}"/>']
     for quarter in range(4):
-        x, y = round(math.cos(quarter * math.pi / 2)), -round(math.sin(quarter * math.pi / 2))
+        x, y = float(round(math.cos(quarter * math.pi / 2))), -float(round(math.sin(quarter * math.pi / 2)))
         parts.append(_stroke("section-tick", f"M{middle + x * (RADIUS - 4):g} {middle + y * (RADIUS - 4):g}"
                              f"L{middle + x * (RADIUS + 4):g} {middle + y * (RADIUS + 4):g}"))  # fmt: skip
     labels = [_label(zero, middle + RADIUS + 8, middle - 7, "start", "tip"), _label("90°", middle, 42)]
@@ -246,7 +246,8 @@ def draw_circle(section: Section, angle: float) -> str:
         for value, side in ((section.largest, 1.0), (section.smallest, -1.0)):
             end = x + side * reach
             parts.append(_stroke("section-extreme", f"M{end:.1f} {y - 5:.1f}l5 5l-5 5l-5 -5Z"))
-            labels.append(_label(print_value(value, digits=4), end, y + 19, name="crystal-letter"))
+            anchor = "end" if side > 0 else "start"
+            labels.append(_label(print_value(value, digits=4), end - 9 * side, y + 19, anchor, "crystal-letter"))
         start, now = 2.0 * (0.0 - section.turn), 2.0 * (angle - section.turn)
         for turn, kind in ((start, "section-zero-line"), (now, "section-point-line")):
             parts.append(_stroke(kind, f"M{x:.1f} {y:.1f}L{x + reach * math.cos(turn):.1f} "

@@ -85,8 +85,8 @@ def serve(port: int, data_dir: Path, *, open_browser: bool) -> None:
     Raises:
         InputError: the port cannot be used.
     """
-    # A turn is answered in a few milliseconds beside calculations that run in threads; with Python's usual 5 ms it would
-    # wait as long again for its share.
+    # A turn is answered in a few milliseconds beside calculations that run in threads; with Python's usual 5 ms it
+    # would wait as long again for its share.
     sys.setswitchinterval(0.0005)
     listener = bind_loopback(port)
     url = f"http://{LOOPBACK}:{listener.getsockname()[1]}/"

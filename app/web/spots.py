@@ -31,7 +31,9 @@ router = APIRouter(prefix="/api/samples", route_class=StrictRoute, responses=res
 
 SHOWN = 8
 PREDICTED_INDEX = 3
-Pair = Annotated[list[Number], Field(min_length=2, max_length=2)]
+FARTHEST = 1e6
+Place = Annotated[Number, Field(ge=-FARTHEST, le=FARTHEST)]
+Pair = Annotated[list[Place], Field(min_length=2, max_length=2)]
 
 
 class SpotsRequest(Part):
@@ -40,7 +42,7 @@ class SpotsRequest(Part):
     spots: Annotated[list[Pair], Field(min_length=2, max_length=60)] = Field(
         description="x to the right and y up, looking along the beam, in the unit of the distance"
     )
-    distance: Number = Field(gt=0, le=1e6, description="crystal to film")
+    distance: Number = Field(ge=1e-3, le=FARTHEST, description="crystal to film")
     side: Literal["back", "front"] = Field("back", description="back reflection or transmission")
     angles: Annotated[list[Number], Field(min_length=1, max_length=3)] = Field(description="dial readings")
     tolerance: Number = Field(1.0, gt=0, le=10, description="degrees")

@@ -250,6 +250,19 @@ def press_slow_turn(page: Page, served: Served) -> None:
     expect(page.locator("#way-said")).to_have_text("specimen frame")
 
 
+def press_probe(page: Page, served: Served) -> None:
+    open_copy(page, served)
+    page.keyboard.press("p")
+    expect(page.locator("#probe-value")).not_to_have_text("–")
+    page.focus("#probe-panel")
+    for key in ("ArrowLeft", "ArrowRight", "ArrowUp", "ArrowDown"):
+        before = page.locator("path.probe-foot").get_attribute("d") or ""
+        page.keyboard.press(f"Shift+{key}")
+        expect(page.locator("path.probe-foot")).not_to_have_attribute("d", before)
+    page.keyboard.press("p")
+    expect(page.locator("#probe-panel")).to_be_hidden()
+
+
 def press_full_window(page: Page, served: Served) -> None:
     open_copy(page, served)
     page.keyboard.press("w")
@@ -361,6 +374,8 @@ EFFECTS: dict[str, Callable[[Page, Served], None]] = {
     "look": press_in_picture(("Shift+ArrowLeft", "Shift+ArrowRight", "Shift+ArrowUp", "Shift+ArrowDown"), False),
     "reset": press_reset,
     "catch": press_catch,
+    "probe": press_probe,
+    "move-probe": press_probe,
     "take-cell": press_in_cell("Enter", "14.1(2)"),
     "leave-cell": press_in_cell("Escape", "13.20(8)"),
     "grid-down": press_in_grid,
