@@ -2,7 +2,7 @@
 (() => {
   "use strict";
   const get = (/** @type {string} */ id) => /** @type {any} */ (document.getElementById(id));
-  const place = get("scene"), note = get("scene-note");
+  const place = get("view"), note = get("scene-note");
   const plotly = /** @type {any} */ (window).Plotly;
   const data = JSON.parse(get("scene-data").textContent);
   const RANGE = 1.5; // beyond the axes of the longest block, so that nothing is cut off

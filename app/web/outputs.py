@@ -289,7 +289,9 @@ def _refuse_notice(notice: str) -> InputError:
     found = re.match(r"The link's (\w+) was left out \((.*)\): ", notice)
     name, reason = (found[1], found[2]) if found else (None, notice)
     return InputError(
-        f"The {name or 'address'} cannot be taken: {reason.rstrip('.')}.", field=name, hint="Correct it, or leave it out."
+        f"The {name or 'address'} cannot be taken: {reason.rstrip('.')}.",
+        field=name,
+        hint="Correct it, or leave it out.",
     )
 
 

@@ -45,9 +45,10 @@ from app.web import (
     tensor_series,
     twin_question,
 )
+from app.web.access import Access
 from app.web.answers import JsonAnswer
 from app.web.resources import static_folder
-from app.web.security import AnswerHeaders, BodyLimit, LoopbackOnly
+from app.web.security import AnswerHeaders, BodyLimit, Gate
 
 DESCRIPTION = """\
 Tensor properties of single crystals: what symmetry allows, what readings on cut bars tell, and how a part must be cut.
@@ -58,11 +59,12 @@ in the crystal frame; a tensor goes over as C T Cᵀ.
 """
 
 
-def create_app(data_dir: Path | None = None) -> FastAPI:
+def create_app(data_dir: Path | None = None, access: Access | None = None) -> FastAPI:
     """Make the ASGI application.
 
     Args:
         data_dir: where stored work is kept; kept in ``app.state.data_dir``, made by whoever first stores something.
+        access: under which names it answers and which token it demands; loopback without a token unless given.
     """
     app = FastAPI(
         title="Halfturn",
@@ -76,7 +78,7 @@ def create_app(data_dir: Path | None = None) -> FastAPI:
         # The first is outermost, so that every answer gets its headers.
         middleware=[
             Middleware(AnswerHeaders),
-            Middleware(LoopbackOnly),
+            Middleware(Gate, access=access),
             Middleware(BodyLimit),
             Middleware(error_answers.LastResort),
         ],

@@ -102,14 +102,23 @@ def build_solid(
         raise InputError(f"The detail is {LOWEST_DETAIL} to {HIGHEST_DETAIL} points per half circle.", field="detail")
     surface = build_surface(matrix, kind, detail)
     _refuse_flat(surface, matrix, kind)
-    radii = np.linalg.norm(surface.vertices, axis=1)
-    scale = size / (2.0 * float(np.max(radii)))
-    vertices = surface.vertices * scale
+    # In parts of the largest coordinate, since the square of a very large or small one has no number.
+    peak = float(np.max(np.abs(surface.vertices)))
+    shape = surface.vertices / peak
+    grown = size / (2.0 * float(np.max(np.linalg.norm(shape, axis=1))))
+    scale = grown / peak
+    if not (np.isfinite(scale) and scale > 0):
+        raise InputError(
+            "The values are too large or too small for a scale in mm.",
+            field="surface",
+            hint="Give them in a unit in which they are neither.",
+        )
+    vertices = shape * grown
     if pose is not None:
         vertices = vertices @ pose.T
     _refuse_thin(vertices, size)
     bodies = {sign: _pick(surface, vertices, sign) for sign in (1, -1) if np.any(surface.sheets == sign)}
-    cut = None if surface.cut_at is None else surface.cut_at * scale
+    cut = None if surface.cut_at is None else surface.cut_at / peak * grown
     extents = np.ptp(vertices, axis=0)
     frame: FrameName = "crystal" if pose is None else "specimen"
     return Solid(kind, frame, scale, _name_length(kind, unit), size, extents, cut, bodies)

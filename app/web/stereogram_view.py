@@ -68,6 +68,7 @@ def trace_levels(matrix: FloatArray) -> list[Trace]:
         points = line.points / np.linalg.norm(line.points, axis=1)[:, None]
         # The radius of a line of negative value is its size: the direction is the point's own all the same.
         kind = "level heavy" if line.level is not None and round(line.level, 12) in heavy else "level"
+        kind += " minus" if line.level is not None and line.level < 0 else ""
         traces.append(Trace(points, kind, "" if line.level is None else f"{line.level:.6g}"))
     return traces + [Trace(curve, "zero", "0") for curve in zero_cone(matrix)]
 

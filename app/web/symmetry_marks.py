@@ -25,8 +25,10 @@ CIRCLE_POINTS: Final = 73
 def find_axes(crystal: Crystal) -> list[tuple[FloatArray, int, int]]:
     """Axes of a group as lines: unit vector, highest proper turn (1 for none), highest rotoinversion turn above 2.
 
-    Of a limiting group none: its axes are not drawn.
+    Of a limiting group none: ``draw_elements`` has its own marks for them.
     """
+    if crystal.group.limiting:
+        return []
     found: list[tuple[FloatArray, int, int]] = []
     for operation in crystal.operations:
         if operation.axis is None or operation.turn not in ORDERS:
@@ -45,7 +47,9 @@ def find_axes(crystal: Crystal) -> list[tuple[FloatArray, int, int]]:
 
 
 def find_mirrors(crystal: Crystal) -> FloatArray:
-    """Normals of the mirrors, shape (m, 3)."""
+    """Normals of the mirrors, shape (m, 3); of a limiting group only the one across its axis, if it is a mirror."""
+    if crystal.group.limiting:
+        return np.array([[0.0, 0.0, 1.0]] if crystal.group.symbol in ("∞/m", "∞/mm") else []).reshape(-1, 3)
     normals: list[FloatArray] = []
     for operation in crystal.operations:
         if not operation.improper or operation.turn != 2 or operation.axis is None:
@@ -70,6 +74,8 @@ def draw_elements(
         f'<path class="stereo-mirror" d="{_trace_mirror(screen @ normal, project, radius)}"/>'
         for normal in find_mirrors(crystal)
     ]
+    if crystal.group.limiting:
+        parts += _draw_limiting(crystal.group.symbol, screen, project, radius)
     inverting = any(operation.improper and operation.turn == 1 for operation in crystal.operations)
     for axis, proper, inverse in find_axes(crystal):
         shown = screen @ axis
@@ -83,6 +89,29 @@ def draw_elements(
             )
     if inverting:
         parts.append('<circle class="stereo-centre" r="2"/>')
+    return parts
+
+
+def _draw_limiting(
+    symbol: str, screen: FloatArray, project: Callable[[FloatArray], FloatArray], radius: float
+) -> list[str]:
+    """A disc with the sign ∞ where the axis x3 leaves the sphere, and a dotted circle of half-turns across it.
+
+    The tables have no symbol for infinite axes. Of the spheres' groups nothing is drawn: every direction is an axis.
+    """
+    if symbol.startswith("∞∞"):
+        return []
+    parts = []
+    if symbol in ("∞2", "∞/mm"):
+        path = _trace_mirror(screen[:, 2], project, radius)
+        parts.append(f'<path class="stereo-half-turns" d="{path}"/>')
+    shown = screen[:, 2]
+    for end in [shown, -shown] if abs(shown[2]) < 1e-6 else [shown if shown[2] > 0 else -shown]:
+        x, y = radius * project(end)
+        parts.append(
+            f'<g class="stereo-axis" transform="translate({x:.1f} {-y:.1f})"><circle class="stereo-endless" r="5.2"/>'
+            '<text class="stereo-endless-sign" y="2.6" text-anchor="middle">∞</text></g>'
+        )
     return parts
 
 

@@ -188,6 +188,17 @@ def test_degenerate_tensors_that_are_solids_are_made(kind: Any) -> None:
         assert 2 * np.linalg.norm(mesh.vertices, axis=1).max() == pytest.approx(50.0, rel=1e-5)
 
 
+@pytest.mark.parametrize("kind", ["quadric", "value", "flux"])
+@pytest.mark.parametrize("factor", [1e-290, 1e290])
+def test_the_shape_does_not_depend_on_the_unit(kind: Any, factor: float) -> None:
+    usual, other = build_solid(ONE_SHEET, kind), build_solid(ONE_SHEET * factor, kind)
+    # A quadric's radius goes with 1/√value, the others' with the value.
+    power = 0.5 if kind == "quadric" else -1.0
+    assert other.scale == pytest.approx(usual.scale * factor**power, rel=1e-9)
+    np.testing.assert_allclose(other.bodies[1][0], usual.bodies[1][0], atol=1e-6)
+    assert (other.cut is None) == (usual.cut is None)
+
+
 def test_the_mesh_library_is_not_loaded_at_the_start() -> None:
     code = "import sys, app.web.server; print('trimesh' in sys.modules)"
     ran = subprocess.run(
