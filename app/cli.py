@@ -16,6 +16,7 @@ from app.fitting import add_fit_command
 from app.version import VERSION
 
 DEFAULT_PORT = 8010
+TOKEN_SETTING = "HALFTURN_TOKEN"
 EXIT_DONE = 0
 EXIT_BAD_INPUT = 2
 
@@ -56,6 +57,19 @@ def build_parser() -> argparse.ArgumentParser:
     serving.add_argument(
         "--data", type=Path, metavar="DIR", help=f"where stored work is kept; default {user_data_folder()}"
     )
+    serving.add_argument(
+        "--host",
+        default="127.0.0.1",
+        metavar="ADDRESS",
+        help="listen on this address of the machine, 0.0.0.0 for all; other machines can then reach it, a token is "
+        "demanded and nothing is encrypted; default 127.0.0.1, this machine alone",
+    )
+    serving.add_argument(
+        "--token",
+        metavar="TEXT",
+        help=f"demand this token; better put into the environment as {TOKEN_SETTING}, since others on this machine can "
+        "read a command line; made and printed where --host needs one and none is given",
+    )
     parser.set_defaults(run=run_serve)
     add_fit_command(parser.add_subparsers(title="commands", metavar="COMMAND"))
     return parser
@@ -69,9 +83,12 @@ def run_serve(options: argparse.Namespace) -> int:
 
     # The matrices of this tool are small: sharing one among threads costs more than it brings, and makes turns uneven.
     os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
+    from app.web.access import check_token
     from app.web.serving import serve
 
-    serve(options.port, data_dir, open_browser=not options.no_browser)
+    stated = options.token if options.token is not None else os.environ.get(TOKEN_SETTING) or None
+    token = None if stated is None else check_token(stated)
+    serve(options.port, data_dir, open_browser=not options.no_browser, host=options.host, token=token)
     return EXIT_DONE
 
 

@@ -105,6 +105,8 @@ export const postStages = (stages) => ask("POST", "/api/stages", { stages });
 /** @param {string} id @param {object} asked */
 export const postConsequences = (id, asked) => ask("POST", `${at(id)}/consequences`, asked);
 /** Asked for every picture while its panel is open, so without a word of waiting. @param {string} id @param {object} asked */
+export const postStereogram = (id, asked) => send("POST", `${at(id)}/stereogram`, asked);
+/** @param {string} id @param {object} asked */
 export const postSection = (id, asked) => send("POST", `${at(id)}/section`, asked);
 /** @param {string} id @param {object} asked */
 export const askFrame = (id, asked) => ask("POST", `${at(id)}/frame-question`, asked);

@@ -100,6 +100,8 @@ function start({ subject, first }) {
   const choose = (/** @type {string} */ attribute, /** @type {string} */ value) => document.querySelectorAll(`[data-${attribute}]`).forEach((button) => button.setAttribute("aria-pressed", String(/** @type {any} */ (button).dataset[attribute] === value)));
   // A part of the way to the pose is shown, and nothing is kept of it.
   document.addEventListener("show-part", (event) => { if (!state.press) request({ way: /** @type {CustomEvent} */ (event).detail }); });
+  // Another panel turns the specimen: a pose or a turn from one, kept where the hand has let go.
+  document.addEventListener("turn-wish", (event) => { const { more, keeps } = /** @type {CustomEvent} */ (event).detail; if (!state.press) request({ catch: state.catching, ...more }, keeps); });
   const setSurface = (/** @type {string} */ kind) => { state = { ...state, surface: kind }; choose("surface", kind); showSurfaceWords(subject, kind); live.send({ type: "surface", hash: state.hash, surface: kind }); request(); };
   document.querySelectorAll("[data-surface]").forEach((b) => b.addEventListener("click", () => setSurface(/** @type {any} */ (b).dataset.surface)));
   document.querySelectorAll("[data-hold]").forEach((b) => b.addEventListener("click", () => { const hold = /** @type {any} */ (b).dataset.hold; choose("hold", hold); request({ hold }); }));

@@ -92,7 +92,9 @@ def choose_next_cut(
     first, second = np.triu_indices(min(len(matrices), MOST_ANSWERS), 1)
     shares = weights[first] * weights[second]
     gaps = (predicted[first] - predicted[second]) / sigma
-    overlaps = shares @ np.exp(-np.square(gaps) / 8.0) / np.sum(shares)
+    # Predictions may be farther apart than a square can hold; they then do not overlap at all.
+    with np.errstate(over="ignore"):
+        overlaps = shares @ np.exp(-np.square(gaps) / 8.0) / np.sum(shares)
     overlaps = np.where(np.all(np.isfinite(predicted), axis=0), overlaps, np.inf)
     least = float(np.min(overlaps))
     if not least < 1.0 - 1e-9:

@@ -2,8 +2,9 @@
 
 Refused with a sentence: what is not JSON (with line and column), not UTF-8, not an object; numbers that are not finite
 (NaN, Infinity, 1e999) wherever they stand; a key that stands twice in one object, where readers silently keep the
-last; half of a surrogate pair, which no answer could quote. The media type that the caller states is not asked for:
-the body is JSON or it is refused, and pages of other origins are kept out by their Origin.
+last; half of a surrogate pair, which no answer could quote; objects and lists nested deeper than any call needs. The
+media type that the caller states is not asked for: the body is JSON or it is refused, and pages of other origins are
+kept out by their Origin.
 """
 
 from __future__ import annotations
@@ -12,18 +13,22 @@ import json
 import math
 import re
 from collections.abc import Callable, Coroutine, Iterator
-from typing import Any
+from itertools import accumulate
+from typing import Any, Final
 
 from fastapi import Request, Response
 from fastapi.routing import APIRoute
 
 from app.errors import InputError
 from app.web.error_answers import field_path
+from app.web.limits import DEEPEST_BODY, LONGEST_NUMBER
 
 # Cheap to search for, and present in every body that holds a number that is not finite or half of a surrogate pair.
 # Where it is found in innocent text, the only cost is one more walk through the body.
 _SUSPICIOUS = re.compile(rb"NaN|Infinity|[eE]\+?[0-9]{3}|[0-9]{200}|\\u[dD][89a-fA-F]")
-_LONGEST_INTEGER = 308
+# How each bracket changes the depth; what is no bracket is left out before.
+_STEPS: Final = {ord("["): 1, ord("{"): 1, ord("]"): -1, ord("}"): -1}
+_NO_BRACKETS: Final = bytes(byte for byte in range(256) if byte not in _STEPS)
 
 
 class StrictRoute(APIRoute):
@@ -96,6 +101,8 @@ def parse_object(body: bytes) -> dict[str, Any]:
             object_pairs_hook=build_object,
             parse_int=_parse_integer if suspicious else None,
         )
+    except RecursionError:
+        raise _too_deep() from None
     except UnicodeDecodeError as error:
         raise InputError(
             f"The body is not UTF-8 text: byte {error.start + 1} cannot be read.", hint="Send JSON in UTF-8."
@@ -109,14 +116,27 @@ def parse_object(body: bytes) -> dict[str, Any]:
         ) from None
     if not isinstance(content, dict):
         raise InputError("The body must be a JSON object with named members.", hint='Send an object: {"crystal": …}.')
+    # Brackets within text count here, so that this can only be too much: then the content itself is looked at.
+    if max(accumulate(map(_STEPS.__getitem__, body.translate(None, _NO_BRACKETS))), default=0) > DEEPEST_BODY:
+        for location, value in _walk(content):
+            if len(location) >= DEEPEST_BODY and isinstance(value, dict | list):
+                raise _too_deep(field_path(location[:3]))
     if suspicious or seen_twice:
         _refuse_unfit(content)
     return content
 
 
+def _too_deep(field: str | None = None) -> InputError:
+    return InputError(
+        f"The body is nested too deeply: it may have {DEEPEST_BODY} levels of objects and lists.",
+        field=field,
+        hint="No call needs more than ten.",
+    )
+
+
 def _parse_integer(digits: str) -> int | float:
     """Read an integer; one beyond every float becomes infinite, and is refused with its field afterwards."""
-    return int(digits) if len(digits) <= _LONGEST_INTEGER else float(digits)
+    return int(digits) if len(digits) <= LONGEST_NUMBER else float(digits)
 
 
 def _refuse_unfit(content: dict[str, Any]) -> None:

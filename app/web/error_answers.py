@@ -8,6 +8,7 @@
 from __future__ import annotations
 
 import logging
+import traceback
 from collections.abc import Sequence
 from typing import Any
 
@@ -55,7 +56,7 @@ def error_answer(
         try:
             return JsonAnswer({"error": {**error, "detail": detail}}, status_code=status, headers=headers)
         except InputError:
-            _log.warning("the detail of an error could not be written: %s", message)
+            _log.warning("the detail of an error could not be written")
     return JsonAnswer({"error": error}, status_code=status, headers=headers)
 
 
@@ -84,8 +85,25 @@ def explain(error: Exception) -> HalfturnError:
         return InputError(
             "The body is nested too deeply to be read.", hint="No call needs more than a few levels of nesting."
         )
-    _log.error("unexpected error", exc_info=error)
+    _log.error("unexpected error\n%s", tell_places(error))
     return HalfturnError(UNEXPECTED, hint="The server's log has the particulars. Nothing that was kept is lost.")
+
+
+def tell_places(error: BaseException) -> str:
+    """Where an error arose, for the log: its kind and the lines that led to it, of its causes too.
+
+    Without the error's own words, which may quote what was sent: the log holds no data of a sample.
+    """
+    told = []
+    seen: list[BaseException] = []
+    current: BaseException | None = error
+    while current is not None and current not in seen:
+        seen.append(current)
+        frames = traceback.extract_tb(current.__traceback__)
+        told += [f"  {frame.filename}:{frame.lineno} in {frame.name}" for frame in frames]
+        told.append(f"{type(current).__module__}.{type(current).__qualname__}")
+        current = current.__cause__ or current.__context__
+    return "\n".join(told)
 
 
 def answer_explained(request: Request, error: Exception) -> Response:
@@ -244,10 +262,12 @@ class LastResort:
         except (ClientDisconnect, HTTPException):
             # The one has nobody left to answer; the other is answered by whoever raised it through us.
             raise
-        except Exception:
+        except Exception as error:
+            place = getattr(scope.get("route"), "path", "an address without a route")
+            _log.error("unexpected error at %s\n%s", place, tell_places(error))
             if started:
-                raise
-            _log.exception("unexpected error at %s", scope.get("path"))
+                # The server ends the connection, since the answer is not complete.
+                return
             answer = error_answer(
                 500,
                 UNEXPECTED,

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from typing import Any
 
+import numpy as np
 from fastapi import APIRouter, Request
 from pydantic import Field
 
@@ -94,7 +95,7 @@ def _render(found: FrameQuestion) -> list[dict[str, Any]]:
         {
             "sentence": answer.sentence,
             "weight": f"{answer.weight:.3f}",
-            "chi2": f"{answer.chi2:.3g}",
+            "chi2": f"{answer.chi2:.3g}" if np.isfinite(answer.chi2) else "beyond 10³⁰⁸",
             "p": f"{answer.p_value:.2g}",
             "survives": answer.survives,
             "namings": [naming.sentence for naming in answer.namings[:4]],

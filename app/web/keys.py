@@ -37,6 +37,7 @@ class KeyEntry:
 SAMPLE_PAGES: Final = "the pages of a sample"
 PICTURE: Final = "in the picture"
 PROBE: Final = "on the probe"
+DISC: Final = "in the stereogram"
 FIELD: Final = "in a field"
 
 KEYS: Final[tuple[KeyEntry, ...]] = (
@@ -79,6 +80,15 @@ KEYS: Final[tuple[KeyEntry, ...]] = (
         "tensor",
         PROBE,
     ),
+    KeyEntry(
+        "move-cursor",
+        ("←", "→", "↑", "↓"),
+        ("ArrowLeft", "ArrowRight", "ArrowUp", "ArrowDown"),
+        "move the cursor by a degree, with Shift by ten",
+        "tensor",
+        DISC,
+    ),
+    KeyEntry("put-on-cursor", ("Enter",), ("Enter",), "put the chosen axis where the cursor is", "tensor", DISC),
     KeyEntry("take-cell", ("Enter",), ("Enter",), "take the number typed into a cell", "tensor", FIELD),
     KeyEntry("leave-cell", ("Esc",), ("Escape",), "leave the cell as it was", "tensor", FIELD),
     KeyEntry(

@@ -8,6 +8,7 @@ as a binary message (``app.web.scene.pack_scene``). A hash that is not known, af
 
 from __future__ import annotations
 
+import asyncio
 import hashlib
 import json
 from collections import OrderedDict
@@ -28,6 +29,7 @@ from app.web.bodies import parse_object
 from app.web.error_answers import explain
 from app.web.followed import find_followed
 from app.web.kept import crystal_for, crystal_of, entry_of, print_own_unit, tensor_of
+from app.web.limits import MAX_MESSAGE_BYTES
 from app.web.parts import Number, Part, Pose, Text, ThreeByThree
 from app.web.posed import describe_pose, describe_subject
 from app.web.probing import ProbePart, probe_surface
@@ -35,6 +37,7 @@ from app.web.scene import Subject, pack_scene
 from app.web.settling import find_settling, fingerprint_readings
 from app.web.showing import turn_part
 from app.web.sought import find_answer, fingerprint_answer
+from app.web.stereogram_frame import DiscTurn, turn_on_disc
 from app.web.turning import (
     Caught,
     Hold,
@@ -85,6 +88,7 @@ class TurnPart(Part):
     drag: list[Number] | None = Field(None, min_length=2, max_length=2, description="right and up, radians")
     ring: Literal["x", "y", "z"] | None = Field(None, description="the drag is of this axis's ring")
     steps: list[Number] | None = Field(None, min_length=3, max_length=3, description="degrees right, up, about z")
+    disc: DiscTurn | None = Field(None, description="the drag is in the stereogram")
 
 
 class PutPart(Part):
@@ -215,6 +219,8 @@ def answer_turn(subject: Subject, message: TurnMessage) -> dict[str, Any]:
             right, up, about_z = message.turn.steps
             matrix = turn_by_hand(matrix, view, float(np.deg2rad(right)), float(np.deg2rad(up)))
             matrix = spin(matrix, 2, about_z)
+        if message.turn.disc is not None:
+            matrix = turn_on_disc(subject.crystal, matrix, message.turn.disc)
         if message.catch:
             matrix, caught = catch(subject.crystal, subject.principal, matrix, about)
         pose = as_pose(matrix)
@@ -239,7 +245,13 @@ def answer_turn(subject: Subject, message: TurnMessage) -> dict[str, Any]:
 
 def read_message(text: str) -> TensorMessage | SurfaceMessage | TurnMessage:
     """A message in one of its three shapes. Raises InputError."""
-    content = parse_object(text.encode())
+    encoded = text.encode()
+    if len(encoded) > MAX_MESSAGE_BYTES:
+        raise InputError(
+            f"The message is too large: it has {len(encoded)} bytes and may have {MAX_MESSAGE_BYTES}.",
+            hint="A turn takes about one kilobyte.",
+        )
+    content = parse_object(encoded)
     models: dict[Any, Any] = {"tensor": TensorMessage, "surface": SurfaceMessage, "turn": TurnMessage}
     kind = content.get("type")
     model = models.get(kind) if isinstance(kind, str) else None
@@ -290,6 +302,8 @@ async def live(socket: WebSocket) -> None:
             await socket.send_bytes(sent)
         else:
             await socket.send_text(sent)
+        # Messages that already wait are received without a pause: other pages have their turn between them.
+        await asyncio.sleep(0)
 
 
 def write_answer(answer: dict[str, Any]) -> str:

@@ -25,7 +25,7 @@ BLIND_POINTS: Final = 240
 
 def draw_readings(crystal: Crystal, fit: Fit, readings: Sequence[Reading], pose: Pose) -> str:
     """Readings taken; of a determined tensor its values, axes and their regions, else what would settle it."""
-    taken = _list_taken(crystal, readings, pose)
+    taken = list_taken(crystal, readings, pose)
     marks: list[Mark] = list_poles(crystal)
     marks = [Mark(mark.vector, mark.kind, mark.name, line=True) for mark in marks]
     traces: list[Trace] = []
@@ -44,7 +44,8 @@ def draw_readings(crystal: Crystal, fit: Fit, readings: Sequence[Reading], pose:
     return draw_stereogram(crystal, Picture([*marks, *taken], traces), title=title)
 
 
-def _list_taken(crystal: Crystal, readings: Sequence[Reading], pose: Pose) -> list[Mark]:
+def list_taken(crystal: Crystal, readings: Sequence[Reading], pose: Pose) -> list[Mark]:
+    """A mark for every line along which, or in a plane with which, something was read."""
     vectors: list[FloatArray] = []
     for reading in readings:
         for direction in (reading.direction, reading.second):

@@ -35,7 +35,7 @@ class ErrorAnswer(Answer):
 
 
 ERROR_RESPONSES: dict[int | str, dict[str, Any]] = {
-    403: {"model": ErrorAnswer, "description": "Foreign Host or Origin"},
+    403: {"model": ErrorAnswer, "description": "A foreign Host, Origin or site"},
     413: {"model": ErrorAnswer, "description": "The body is over 8 MiB"},
     422: {"model": ErrorAnswer, "description": "A bad request: what is wrong, where, and what to do"},
 }

@@ -58,7 +58,7 @@ EMPTY_TABLE: Final = "temperature,a,b,c,alpha,beta,gamma\n"
 def kept_series(document: SampleDocument) -> dict[str, Any]:
     """The series of cells that a document holds, with what it leaves open filled in."""
     found: dict[str, Any] = next((plain(entry) for entry in document.series if plain(entry).get("kind") == "cells"), {})
-    return {**DEFAULT_SERIES, **found}
+    return {**DEFAULT_SERIES, **{key: value for key, value in found.items() if value is not None}}
 
 
 def change_series(document: SampleDocument, change: Mapping[str, Any]) -> list[dict[str, Any]]:

@@ -10,6 +10,7 @@ from starlette.middleware import Middleware
 from app.store import open_store
 from app.version import VERSION
 from app.web import (
+    api_page,
     bar_questions,
     calculation,
     campaign_calls,
@@ -40,6 +41,7 @@ from app.web import (
     stage_calls,
     stages,
     static_files,
+    stereogram_panel,
     tensor_copies,
     tensor_page,
     tensor_series,
@@ -87,8 +89,10 @@ def create_app(data_dir: Path | None = None, access: Access | None = None) -> Fa
     app.state.store = None if data_dir is None else open_store(data_dir)
     error_answers.install(app)
     error_page.install(app)
+    api_page.install(app)
     app.include_router(pages.router)
     app.include_router(glossary_page.router)
+    app.include_router(api_page.router)
     app.include_router(samples.router)
     app.include_router(tensor_page.router)
     app.include_router(live.router)
@@ -102,6 +106,7 @@ def create_app(data_dir: Path | None = None, access: Access | None = None) -> Fa
     app.include_router(cut_page.page_router)
     app.include_router(consequences_page.router)
     app.include_router(section_page.router)
+    app.include_router(stereogram_panel.router)
     app.include_router(cut_page.router)
     app.include_router(spots.router)
     app.include_router(stages.router)

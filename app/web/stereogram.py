@@ -9,7 +9,7 @@ for the first; Lambert's projection for the second). Symmetry elements have the 
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from html import escape
 from typing import Final, Literal
 
@@ -17,7 +17,8 @@ import numpy as np
 import numpy.typing as npt
 
 from app.crystal.crystal import Crystal
-from app.web.stereogram_names import Box, place_name
+from app.web.label_places import Box
+from app.web.stereogram_names import bar_name, place_name
 from app.web.symmetry_marks import draw_elements
 
 FloatArray = npt.NDArray[np.float64]
@@ -41,6 +42,7 @@ class Mark:
         kind: class of the mark, such as "normal", "row", "principal", "specimen", "taken", "proposed".
         name: printed beside it; empty prints nothing.
         line: whether the opposite direction is meant as well; then only the near end is drawn.
+        opposite: the name of the other end, printed where that one is drawn and names are signed.
         put: a direction as the user would type it; a click on the mark puts z there.
     """
 
@@ -49,6 +51,7 @@ class Mark:
     name: str = ""
     line: bool = False
     put: str = ""
+    opposite: str = ""
 
 
 @dataclass(frozen=True)
@@ -146,10 +149,10 @@ def draw_stereogram(
     if numbered:
         for trace in picture.traces:
             parts += _draw_level(trace, names)
+    told = "" if side == "both" else f' data-side="{side}"'
     return (
         f'<svg class="stereogram" viewBox="-122 -116 244 232" role="{role}" aria-label="{escape(title, quote=True)}"'
-        f"{'' if side == 'both' else f' data-side="{side}"'}>"
-        f"{''.join(parts)}</svg>"
+        f"{told}>{''.join(parts)}</svg>"
     )
 
 
@@ -201,6 +204,11 @@ def _cut_at_rim(shown: FloatArray) -> FloatArray:
     return cut
 
 
+def name_end(mark: Mark, screen: FloatArray) -> str:
+    """The name of the end of a mark that is drawn: of a line the one nearer to the viewer."""
+    return mark.opposite if mark.opposite and mark.line and (screen @ mark.vector)[2] < -1e-9 else mark.name
+
+
 def _place_mark(mark: Mark, names: _Names) -> tuple[float, float, bool] | None:
     """Right and down of a mark's place and whether it is far; None where it is on the side that is not drawn."""
     shown = names.screen @ mark.vector
@@ -236,7 +244,8 @@ def _draw_mark(mark: Mark, names: _Names) -> list[str]:
         )
     ]
     if mark.name:
-        parts += _draw_name(mark, x, y, names)
+        signed = replace(mark, name=name_end(mark, names.screen)) if names.numbered else mark
+        parts += _draw_name(signed, x, y, names)
     return parts
 
 
@@ -248,7 +257,8 @@ def _draw_name(mark: Mark, x: float, y: float, names: _Names) -> list[str]:
     place = (x + NAMED_GAP * float(way[0]), y + NAMED_GAP * float(way[1]))
     if names.numbered:
         away = MARK_SIZES.get(mark.kind, 3.2) + 1.6
-        found = place_name(mark.name, NAME_SIZES.get(mark.kind, 7.5), (x, y), away, names.boxes)
+        printed = mark.name.replace("\u2212", "") if mark.kind in ("normal", "row") else mark.name
+        found = place_name(printed, NAME_SIZES.get(mark.kind, 7.0), (x, y), away, names.boxes)
         if found is None:
             return []
         place, anchor = found, "start"
@@ -260,7 +270,7 @@ def _draw_name(mark: Mark, x: float, y: float, names: _Names) -> list[str]:
     return [
         (
             f'<text class="stereo-name {mark.kind}" x="{place[0]:.1f}" y="{place[1]:.1f}" text-anchor="{anchor}">'
-            f"{_set_name(mark)}</text>"
+            f"{bar_name(mark.name) if names.numbered and mark.kind in ('normal', 'row') else _set_name(mark)}</text>"
         )
     ]
 
@@ -275,10 +285,8 @@ def _draw_level(trace: Trace, names: _Names) -> list[str]:
     for x, y in places[:: max(1, len(places) // 12)]:
         found = place_name(trace.name, NAME_SIZES["level"], (float(x), float(-y)), 0.0, names.boxes)
         if found is not None:
-            return [
-                f'<text class="stereo-name level" x="{found[0]:.1f}" y="{found[1]:.1f}">'
-                f"{escape(trace.name.replace('-', chr(0x2212)))}</text>"
-            ]
+            text = escape(trace.name.replace("-", "\u2212"))
+            return [f'<text class="stereo-name level" x="{found[0]:.1f}" y="{found[1]:.1f}">{text}</text>']
     return []
 
 
@@ -292,7 +300,7 @@ MARK_SIZES: Final = {"principal": 4.8, "specimen": 5.0, "proposed": 7.2, "target
 """Half the width of the larger marks."""
 
 NAME_SIZES: Final = {"specimen": 10.0, "principal": 10.0, "proposed": 8.5, "target": 8.5, "level": 6.5}
-"""Of the names, as in static/stereogram.css; 7.5 where not listed."""
+"""Of the names as the front page sets them (static/stereogram-panel.css); 7 where not listed."""
 
 SHAPES: Final = {
     "normal": "M-2.6 0a2.6 2.6 0 1 0 5.2 0a2.6 2.6 0 1 0-5.2 0Z",

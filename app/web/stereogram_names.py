@@ -3,6 +3,8 @@
 from __future__ import annotations
 
 import math
+import re
+from html import escape
 from typing import Final
 
 from app.web.label_places import ASCENT, DESCENT, Box, measure_width, overlap
@@ -12,6 +14,8 @@ WAYS: Final = tuple(
 )
 """Above right first, then the other corners, then the sides."""
 
+_NEGATIVE: Final = re.compile("\u2212(\\d)")
+
 FARTHER: Final = (0.0, 3.0)
 BOUNDS: Final[Box] = (-121.0, -115.0, 121.0, 115.0)
 """Of the drawing, beyond which a name would be cut off."""
@@ -20,6 +24,11 @@ BOUNDS: Final[Box] = (-121.0, -115.0, 121.0, 115.0)
 def find_name_box(text: str, size: float, x: float, y: float) -> Box:
     """The box of a name whose baseline starts at (x, y), y downward."""
     return x, y - ASCENT * size, x + measure_width([[text, "plain"]], size), y + DESCENT * size
+
+
+def bar_name(text: str) -> str:
+    """An index form as SVG with a bar over each negative number instead of its sign."""
+    return _NEGATIVE.sub(r'<tspan class="stereo-over" text-decoration="overline">\1</tspan>', escape(text))
 
 
 def place_name(

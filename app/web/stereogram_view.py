@@ -33,7 +33,8 @@ def list_poles(
     for kind in kinds:
         for row, vector in zip(indices.tolist(), compute_directions(crystal, kind, indices), strict=True):
             text = format_indices(kind, row)
-            marks.append(Mark(vector, kind, typeset_indices(text), line=True, put=text))
+            other = typeset_indices(format_indices(kind, [-index for index in row]))
+            marks.append(Mark(vector, kind, typeset_indices(text), line=True, put=text, opposite=other))
     return marks
 
 

@@ -56,7 +56,8 @@ class PropertySeries:
 def kept_tensor_series(document: SampleDocument, shown: KeptProperty) -> dict[str, Any]:
     """The series of a property that a document holds, with what it leaves open filled in."""
     found: dict[str, Any] = next((plain(entry) for entry in document.series if _is_of(plain(entry), shown)), {})
-    return {"kind": "tensors", "property": shown.id, **DEFAULT, **found}
+    given = {key: value for key, value in found.items() if value is not None}
+    return {"kind": "tensors", "property": shown.id, **DEFAULT, **given}
 
 
 def change_tensor_series(

@@ -250,6 +250,20 @@ def press_slow_turn(page: Page, served: Served) -> None:
     expect(page.locator("#way-said")).to_have_text("specimen frame")
 
 
+def press_cursor(page: Page, served: Served) -> None:
+    open_copy(page, served)
+    page.click("#stereogram-panel > summary")
+    expect(page.locator("#stereogram-disc svg")).to_be_visible()
+    page.focus("#stereogram-disc")
+    for key in ("ArrowLeft", "ArrowRight", "ArrowUp", "ArrowDown", "Shift+ArrowRight"):
+        before = page.inner_text("#stereogram-told")
+        page.keyboard.press(key)
+        expect(page.locator("#stereogram-told")).not_to_have_text(before)
+    matrix = page.inner_text("#specimen-matrix")
+    page.keyboard.press("Enter")
+    page.wait_for_function("m => document.querySelector('#specimen-matrix').innerText !== m", arg=matrix)
+
+
 def press_probe(page: Page, served: Served) -> None:
     open_copy(page, served)
     page.keyboard.press("p")
@@ -376,6 +390,8 @@ EFFECTS: dict[str, Callable[[Page, Served], None]] = {
     "catch": press_catch,
     "probe": press_probe,
     "move-probe": press_probe,
+    "move-cursor": press_cursor,
+    "put-on-cursor": press_cursor,
     "take-cell": press_in_cell("Enter", "14.1(2)"),
     "leave-cell": press_in_cell("Escape", "13.20(8)"),
     "grid-down": press_in_grid,

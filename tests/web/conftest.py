@@ -88,6 +88,11 @@ def probe_raise(name: str) -> None:
     raise RAISED[name]
 
 
+@router.post("/fail/{name}")
+def probe_fail(name: str, request: CifRequest) -> None:
+    raise RuntimeError(f"a defect that quotes {name} and {request.text}")
+
+
 @router.get("/answer/{name}")
 def probe_answer(name: str) -> JsonAnswer:
     answers: dict[str, Any] = {

@@ -312,7 +312,8 @@ def test_the_next_sighting_is_named_with_its_dials(client: TestClient, sample: A
     stage = client.get("/api/stages").json()[0]
     mounted = Rotation.align_vectors([stage["sight"]], vectors_of(client, sample, ["(1 0 0)"]))[0].as_matrix()
     answer = take(client, sample, sightings=sight(client, sample, stage, mounted, ["(1 0 0)", "(1 1 0)"]))
-    assert re.search(r"Sight n ?\([^)]+\) next: it decides the hand\. It will be at turn [+−]", words(answer["mounting"]))
+    wanted = r"Sight n ?\([^)]+\) next: it decides the hand\. It will be at turn [+−]"
+    assert re.search(wanted, words(answer["mounting"]))
 
 
 def test_a_compensated_cut_keeps_its_value_over_temperature(client: TestClient, sample: Any) -> None:

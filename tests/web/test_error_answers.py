@@ -58,7 +58,11 @@ def test_a_defect_is_logged_and_answered(client: TestClient, caplog: pytest.LogC
     error = error_of(client.get("/probe/raise/bug"), 500)
     assert "ZeroDivisionError" not in str(error)
     assert "a defect" not in str(error)
-    assert any("/probe/raise/bug" in record.getMessage() and record.exc_info for record in caplog.records)
+    (told,) = [record.getMessage() for record in caplog.records if "unexpected" in record.getMessage()]
+    assert "/probe/raise/{name}" in told, "the route, not the address that was asked"
+    assert "builtins.ZeroDivisionError" in told
+    assert "in probe_raise" in told
+    assert "a defect" not in told
 
 
 def test_unknown_addresses_and_wrong_methods(client: TestClient) -> None:

@@ -140,7 +140,8 @@ def test_every_panel_says_what_it_answers(pages: dict[str, str]) -> None:
         for page, content in pages.items()
         if page not in ("/samples", "/glossary")
         for panel in read(content.split('id="keys-dialog"')[0].split('id="main"')[1]).panels
-        if not panel["sentence"].removesuffix("Guide").rstrip().endswith((".", "?")) and not PLAIN.search(panel["heading"])
+        if not panel["sentence"].removesuffix("Guide").rstrip().endswith((".", "?"))
+        and not PLAIN.search(panel["heading"])
     }
     assert silent == set()
 
