@@ -295,7 +295,11 @@ def press_in_picture(keys: tuple[str, ...], changes: bool) -> Callable[[Page, Se
             matrix, drawn = page.inner_text("#specimen-matrix"), page.inner_html("svg.front")
             page.keyboard.press(key)
             page.wait_for_function("drawn => document.querySelector('svg.front').innerHTML !== drawn", arg=drawn)
-            assert (page.inner_text("#specimen-matrix") != matrix) is changes, key
+            if changes:
+                moved = "matrix => document.getElementById('specimen-matrix').innerText !== matrix"
+                page.wait_for_function(moved, arg=matrix)
+            else:
+                assert page.inner_text("#specimen-matrix") == matrix, key
 
     return press
 

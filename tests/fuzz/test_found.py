@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import asyncio
 import json
 import time
 from pathlib import Path
@@ -27,6 +26,7 @@ from app.web.requests import MAX_KEPT_READINGS
 from app.web.server import create_app
 from tests.fuzz.calls import list_documents
 from tests.fuzz.client import LiveTalk
+from tests.fuzz.loops import run_apart
 from tests.readings.builders import TRICLINIC, vector
 
 
@@ -43,7 +43,7 @@ def talk(app: Any, *messages: str) -> list[Any]:
         await live.close()
         return answers
 
-    return asyncio.run(ask())
+    return run_apart(ask())
 
 
 @pytest.mark.parametrize(

@@ -5,7 +5,6 @@ The long run is ``python -m tests.fuzz.run``; a fault that it finds is repeated 
 
 from __future__ import annotations
 
-import asyncio
 import json
 import random
 from pathlib import Path
@@ -19,6 +18,7 @@ from app.web.answers import JsonAnswer
 from app.web.server import create_app
 from tests.fuzz.calls import Ground, list_documents, list_routes, list_sockets, needs_seed
 from tests.fuzz.client import Call, LiveTalk, Reply, ask, judge, judge_live
+from tests.fuzz.loops import run_apart
 from tests.fuzz.run import fuzz
 from tests.fuzz.seeds import LIVE_SEEDS, SEEDS
 
@@ -68,7 +68,7 @@ def test_the_seeds_are_good(tmp_path: Path) -> None:
                 if fault is not None or reply.status >= 400:
                     refused.append(f"{route.name} {number}: {reply.status} {fault} {reply.body[:300]!r}")
 
-    asyncio.run(ask_all())
+    run_apart(ask_all())
     assert refused == []
 
 
@@ -88,7 +88,7 @@ def test_the_live_seeds_are_good(tmp_path: Path) -> None:
         await live.close()
         return answers
 
-    for fault, answer in asyncio.run(talk_all()):
+    for fault, answer in run_apart(talk_all()):
         assert fault is None
         assert isinstance(answer, bytes) or answer["type"] in ("subject", "state"), answer
 
@@ -96,7 +96,7 @@ def test_the_live_seeds_are_good(tmp_path: Path) -> None:
 # A server warns and goes on; whether an answer is sound is for the judge to say.
 @pytest.mark.filterwarnings("ignore::RuntimeWarning")
 def test_a_short_run_finds_nothing(tmp_path: Path) -> None:
-    summary = asyncio.run(fuzz(tmp_path, CALLS, SEED))
+    summary = run_apart(fuzz(tmp_path, CALLS, SEED))
     assert summary.calls >= CALLS
     assert not summary.faults, "\n".join(f"{route}: {fault}\n  {call}" for route, fault, call in summary.faults)
     assert summary.statuses["200"] > CALLS / 10, "too few calls get past the door"
@@ -115,7 +115,7 @@ def fail() -> JsonAnswer:
 def test_a_route_that_fails_is_told() -> None:
     app = FastAPI()
     app.include_router(probe)
-    reply = asyncio.run(ask(app, Call("GET", "/probe/bug")))
+    reply = run_apart(ask(app, Call("GET", "/probe/bug")))
     assert judge(reply) is not None
 
 
