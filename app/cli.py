@@ -11,13 +11,15 @@ import sys
 from collections.abc import Sequence
 from pathlib import Path
 
-from app.errors import InputError
+from app.errors import InputError, StoreError
 from app.fitting import add_fit_command
+from app.keeping import add_keeping_commands, data_folder, user_data_folder
 from app.version import VERSION
 
 DEFAULT_PORT = 8010
 TOKEN_SETTING = "HALFTURN_TOKEN"
 EXIT_DONE = 0
+EXIT_NOT_KEPT = 1
 EXIT_BAD_INPUT = 2
 
 
@@ -29,6 +31,9 @@ def main(arguments: Sequence[str] | None = None) -> int:
     except InputError as error:
         print(f"halfturn: {error}", *_list_problems(error), sep="\n", file=sys.stderr)
         return EXIT_BAD_INPUT
+    except StoreError as error:
+        print(f"halfturn: {error}", file=sys.stderr)
+        return EXIT_NOT_KEPT
     return status
 
 
@@ -71,16 +76,15 @@ def build_parser() -> argparse.ArgumentParser:
         "read a command line; made and printed where --host needs one and none is given",
     )
     parser.set_defaults(run=run_serve)
-    add_fit_command(parser.add_subparsers(title="commands", metavar="COMMAND"))
+    commands = parser.add_subparsers(title="commands", metavar="COMMAND")
+    add_fit_command(commands)
+    add_keeping_commands(commands)
     return parser
 
 
 def run_serve(options: argparse.Namespace) -> int:
     """Serve the pages and the calls until stopped."""
-    data_dir: Path = (options.data or user_data_folder()).expanduser().absolute()
-    if data_dir.exists() and not data_dir.is_dir():
-        raise InputError(f"{data_dir} is not a folder.", field="--data", hint="Name a folder; it is made when needed.")
-
+    data_dir = data_folder(options)
     # The matrices of this tool are small: sharing one among threads costs more than it brings, and makes turns uneven.
     os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
     from app.web.access import check_token
@@ -90,18 +94,6 @@ def run_serve(options: argparse.Namespace) -> int:
     token = None if stated is None else check_token(stated)
     serve(options.port, data_dir, open_browser=not options.no_browser, host=options.host, token=token)
     return EXIT_DONE
-
-
-def user_data_folder() -> Path:
-    """Where this platform keeps a user's data for this tool; not made yet."""
-    home = Path.home()
-    if sys.platform == "win32":
-        return Path(os.environ.get("LOCALAPPDATA") or home / "AppData" / "Local") / "Halfturn"
-    if sys.platform == "darwin":
-        return home / "Library" / "Application Support" / "Halfturn"
-    # The XDG convention: a path that is not absolute is to be ignored.
-    stated = Path(os.environ.get("XDG_DATA_HOME", ""))
-    return (stated if stated.is_absolute() else home / ".local" / "share") / "halfturn"
 
 
 def _port(text: str) -> int:

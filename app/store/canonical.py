@@ -57,7 +57,12 @@ def canonical_json(value: Any) -> bytes:
 
 def content_hash(value: Any) -> str:
     """Return the SHA-256 of the canonical JSON of ``value`` as 64 hexadecimal digits."""
-    return hashlib.sha256(canonical_json(value)).hexdigest()
+    return hash_canonical(canonical_json(value))
+
+
+def hash_canonical(data: bytes) -> str:
+    """Return the SHA-256 of what is canonical JSON already."""
+    return hashlib.sha256(data).hexdigest()
 
 
 def _walk(value: Any, depth: int, to_object: Any, to_list: Any) -> Any:

@@ -6,9 +6,11 @@ the disk. A connection per operation, and writers one after another, so that any
 
 from __future__ import annotations
 
+import os
 import sqlite3
 import threading
 import time
+import weakref
 from collections.abc import Callable, Iterator
 from contextlib import closing, contextmanager
 from datetime import UTC, datetime
@@ -16,13 +18,14 @@ from pathlib import Path
 
 from app.errors import StoreError
 from app.store.failures import explain_failure, is_busy, is_damage
+from app.store.files import BESIDE, copy_database, name_free, open_to_read
 from app.store.migrations import check_ours, migrate
+from app.store.occupancy import OccupiedError, hold_together
+from app.store.purging import list_due, purge
 
 FILE_NAME = "halfturn.sqlite3"
 PATIENCE = 10.0
 """Seconds that an operation waits for another process that is writing."""
-
-_BESIDE = ("-wal", "-shm")
 
 Clock = Callable[[], datetime]
 
@@ -48,12 +51,17 @@ class Database:
         self.notices: tuple[str, ...] = ()
         self._clock = clock
         self._ready = False
+        self._held = False
         self._preparing = threading.Lock()
         self._writing = threading.Lock()
 
+    def moment(self) -> datetime:
+        """The present moment by the store's clock."""
+        return self._clock()
+
     def now(self) -> str:
         """The present moment by the store's clock, as kept."""
-        return write_time(self._clock())
+        return write_time(self.moment())
 
     @contextmanager
     def reading(self) -> Iterator[sqlite3.Connection]:
@@ -107,17 +115,64 @@ class Database:
                 self.path.parent.mkdir(parents=True, exist_ok=True)
             except OSError as error:
                 raise explain_failure(error, self.path.parent) from error
+            self._hold()
             try:
                 damage = self._find_damage()
                 if damage is None:
                     with closing(self._connect("rwc")) as connection:
                         _switch_to_log(connection)
-                        migrate(connection)
+                        migrate(connection, keep_copy=self._keep_copy)
+                        self._purge(connection)
                     self._ready = True
                     return
             except sqlite3.Error as error:
                 raise explain_failure(error, self.path) from error
             self._move_aside(damage)
+
+    def _hold(self) -> None:
+        """Say to whoever would put another file in its place that this one is in use, for as long as this lives."""
+        if self._held:
+            return
+        try:
+            descriptor = hold_together(self.path.parent, PATIENCE)
+        except OccupiedError:
+            raise StoreError(
+                f"Another file is being put in the place of the kept work: {self.path}.",
+                hint="Wait until that is done, then try again.",
+                detail={"path": str(self.path)},
+            ) from None
+        if descriptor is not None:
+            weakref.finalize(self, os.close, descriptor)
+        self._held = True
+
+    def _keep_copy(self, step: int) -> None:
+        """Keep the file as it is before the first step of a migration, dated, beside it. Raises StoreError."""
+        target = name_free(self.path, f"before-form-{step}", self._clock())
+        try:
+            with closing(open_to_read(self.path, PATIENCE)) as source:
+                copy_database(source, target)
+        except (OSError, sqlite3.Error) as error:
+            raise explain_failure(error, target) from error
+        self.notices = (
+            *self.notices,
+            f"The file of kept work is brought to a newer form; as it was before, it is kept as {target}.",
+        )
+
+    def _purge(self, connection: sqlite3.Connection) -> None:
+        """Remove what was deleted long ago; where nothing was, nobody has to be waited for."""
+        if not connection.execute("SELECT 1 FROM sample WHERE deleted IS NOT NULL LIMIT 1").fetchone():
+            return
+        now = self._clock()
+        if not list_due(connection, now):
+            return
+        try:
+            connection.execute("BEGIN IMMEDIATE")
+            purge(connection, now)
+            connection.execute("COMMIT")
+        except sqlite3.OperationalError:
+            # A full disk, or someone who is writing: no reason to keep anyone from the samples. The next opening does.
+            if connection.in_transaction:
+                connection.rollback()
 
     def _find_damage(self) -> str | None:
         """Return what is wrong with the file, None where it is sound, without changing it. Raises StoreError.
@@ -138,13 +193,10 @@ class Database:
 
     def _move_aside(self, damage: str) -> None:
         """Rename a damaged file with its log, keep a notice, and raise StoreError that says where it is now."""
-        stem = f"{self.path.stem}-damaged-{self._clock().astimezone(UTC):%Y%m%dT%H%M%SZ}"
-        names = (stem if count == 1 else f"{stem}-{count}" for count in range(1, 1000))
-        free = next(name for name in names if not self.path.with_name(name + self.path.suffix).exists())
-        aside = self.path.with_name(free + self.path.suffix)
+        aside = name_free(self.path, "damaged", self._clock())
         try:
             # The log goes first: left behind, it would be taken for the log of the new file.
-            for ending in (*_BESIDE, ""):
+            for ending in (*BESIDE, ""):
                 source = Path(f"{self.path}{ending}")
                 if source.exists():
                     source.rename(f"{aside}{ending}")

@@ -163,8 +163,8 @@ class SampleDocument(Record):
 
     @model_validator(mode="after")
     def _check(self) -> SampleDocument:
-        known = [item.id for item in self.properties]
-        _refuse_repeats(known, "properties", "id")
+        _refuse_repeats([item.id for item in self.properties], "properties", "id")
+        known = {item.id for item in self.properties}
         _refuse_repeats([item.name for item in self.poses], "poses", "name")
         for index, reading in enumerate(self.readings):
             if reading.property not in known:
@@ -176,9 +176,11 @@ class SampleDocument(Record):
 
 
 def _refuse_repeats(names: list[str], field: str, key: str) -> None:
+    seen: set[str] = set()
     for index, name in enumerate(names):
-        if name in names[:index]:
+        if name in seen:
             fail(f"The {key} {name} stands here twice.", f"{field}[{index}].{key}")
+        seen.add(name)
 
 
 def read_document(data: Any) -> SampleDocument:

@@ -7,6 +7,7 @@ it is taken whole or not at all, by one process only, whatever happens in betwee
 from __future__ import annotations
 
 import sqlite3
+from collections.abc import Callable
 from dataclasses import dataclass
 
 from app.errors import StoreError
@@ -70,6 +71,26 @@ MIGRATIONS: tuple[Migration, ...] = (
             *(_forbid(table, act) for table in ("revision", "sheet") for act in ("UPDATE", "DELETE")),
         ),
     ),
+    Migration(
+        2,
+        "deleted samples can be removed for good; nothing else lets a revision go",
+        (
+            """CREATE TABLE purging (
+                sample_id TEXT PRIMARY KEY NOT NULL REFERENCES sample (id) DEFERRABLE INITIALLY DEFERRED
+            )""",
+            """CREATE TRIGGER purging_only_deleted BEFORE INSERT ON purging
+                WHEN NOT EXISTS (SELECT 1 FROM sample WHERE id = NEW.sample_id AND deleted IS NOT NULL)
+                OR EXISTS (SELECT 1 FROM sheet WHERE sample_id = NEW.sample_id)
+                BEGIN SELECT RAISE(ABORT, 'only a deleted sample without sheets is removed'); END""",
+            "DROP TRIGGER revision_no_delete",
+            """CREATE TRIGGER revision_no_delete BEFORE DELETE ON revision
+                WHEN NOT EXISTS (SELECT 1 FROM purging WHERE sample_id = OLD.sample_id)
+                BEGIN SELECT RAISE(ABORT, 'a revision is never changed'); END""",
+            # So that neither undoing, nor removing one of many revisions, looks through all of them.
+            "CREATE INDEX revision_by_parent ON revision (sample_id, parent)",
+            "CREATE INDEX sheet_by_revision ON sheet (sample_id, revision)",
+        ),
+    ),
 )
 
 NEWEST = MIGRATIONS[-1].number
@@ -97,16 +118,25 @@ def check_ours(connection: sqlite3.Connection) -> None:
         )
 
 
-def migrate(connection: sqlite3.Connection, steps: tuple[Migration, ...] = MIGRATIONS) -> tuple[int, ...]:
+def migrate(
+    connection: sqlite3.Connection,
+    steps: tuple[Migration, ...] = MIGRATIONS,
+    keep_copy: Callable[[int], None] | None = None,
+) -> tuple[int, ...]:
     """Take every step that the file lacks, each in a transaction of its own; return their numbers.
 
-    ``connection`` is in autocommit mode. Taking all steps again does nothing.
+    ``connection`` is in autocommit mode. Taking all steps again does nothing. ``keep_copy`` is called with the number
+    of the first step that an older file lacks, before anything is changed and while nobody else can write; where it
+    raises, no step is taken.
     """
-    taken = []
+    taken: list[int] = []
     for step in steps:
         connection.execute("BEGIN IMMEDIATE")
         try:
-            if read_version(connection) < step.number:
+            version = read_version(connection)
+            if version < step.number:
+                if keep_copy is not None and version and not taken:
+                    keep_copy(step.number)
                 for statement in step.statements:
                     connection.execute(statement)
                 connection.execute(f"PRAGMA user_version = {step.number}")

@@ -8,8 +8,10 @@ from dataclasses import dataclass
 from typing import Any
 
 from app.errors import ConflictError, NotFoundError
-from app.store.canonical import canonical_json, content_hash
+from app.store.canonical import canonical_json, content_hash, hash_canonical
 from app.store.document import SampleDocument, current_property, read_document
+from app.store.purging import kept_until
+from app.store.search import matches
 
 
 @dataclass(frozen=True)
@@ -32,7 +34,8 @@ class Summary:
     """One line of the list of samples, with what a small picture of its quadric needs.
 
     ``crystal`` and ``property`` are plain JSON-like data as in the document; ``property`` is the one looked at, or
-    None; ``time`` is that of the last change, undo and redo included.
+    None; ``time`` is that of the last change, undo and redo included. ``kept_until`` tells until when a deleted sample
+    can be taken back; None where it is not deleted, or is kept for its printed sheets.
     """
 
     sample_id: str
@@ -48,6 +51,7 @@ class Summary:
     deleted: bool
     crystal: dict[str, Any]
     property: dict[str, Any] | None
+    kept_until: str | None = None
 
 
 @dataclass(frozen=True)
@@ -109,9 +113,11 @@ def kept_of(connection: sqlite3.Connection, sample: sqlite3.Row, number: int | N
     )
 
 
-def summary_of(row: sqlite3.Row) -> Summary:
-    """Return the list's line for a row of a sample joined with its current revision."""
+def summary_of(row: sqlite3.Row, words: tuple[str, ...] = ()) -> Summary | None:
+    """Return the list's line for a row of a sample joined with its current revision; None where a word is not found."""
     document = read_document(json.loads(row["json"]))
+    if not matches(document, words):
+        return None
     looked_at = current_property(document)
     return Summary(
         sample_id=row["id"],
@@ -127,6 +133,7 @@ def summary_of(row: sqlite3.Row) -> Summary:
         deleted=row["deleted"] is not None,
         crystal=document.crystal.plain(),
         property=None if looked_at is None else looked_at.plain(),
+        kept_until=kept_until(row["deleted"], bool(row["printed"])),
     )
 
 
@@ -134,11 +141,37 @@ def add_revision(
     connection: sqlite3.Connection, sample_id: str, number: int, parent: int | None, document: SampleDocument, now: str
 ) -> None:
     """Write one revision; it is never changed again."""
-    data = document.plain()
+    data = canonical_json(document.plain())
     connection.execute(
         "INSERT INTO revision (sample_id, number, parent, hash, json, created) VALUES (?, ?, ?, ?, ?, ?)",
-        (sample_id, number, parent, content_hash(data), canonical_json(data).decode("utf-8"), now),
+        (sample_id, number, parent, hash_canonical(data), data.decode("utf-8"), now),
     )
+
+
+def add_sample(connection: sqlite3.Connection, sample_id: str, document: SampleDocument, now: str) -> None:
+    """Write a new sample with its revision 1."""
+    connection.execute("INSERT INTO sample (id, revision, created, changed) VALUES (?, 1, ?, ?)", (sample_id, now, now))
+    add_revision(connection, sample_id, 1, None, document, now)
+
+
+def save_revision(
+    connection: sqlite3.Connection, sample: sqlite3.Row, document: SampleDocument, parent: int, now: str
+) -> Kept:
+    """Write ``document`` as the next revision of a sample's row and make it the current one; none where it stands
+    already. Raises ConflictError where ``parent`` is not the current one."""
+    if content_hash(document.plain()) == find_revision(connection, sample["id"], sample["revision"])["hash"]:
+        return kept_of(connection, sample)
+    refuse_stale(sample, parent)
+    newest = connection.execute("SELECT max(number) FROM revision WHERE sample_id = ?", (sample["id"],)).fetchone()
+    number = int(newest[0]) + 1
+    add_revision(connection, sample["id"], number, parent, document, now)
+    return point_at(connection, sample["id"], number, now)
+
+
+def point_at(connection: sqlite3.Connection, sample_id: str, number: int, now: str) -> Kept:
+    """Make a revision of a sample the current one."""
+    connection.execute("UPDATE sample SET revision = ?, changed = ? WHERE id = ?", (number, now, sample_id))
+    return kept_of(connection, find_sample(connection, sample_id))
 
 
 def refuse_stale(sample: sqlite3.Row, revision: int) -> None:

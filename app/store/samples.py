@@ -11,24 +11,27 @@ from __future__ import annotations
 import secrets
 import sqlite3
 from collections.abc import Callable
+from datetime import datetime
 
 from app.errors import InputError
-from app.store.canonical import content_hash
 from app.store.database import Database
 from app.store.document import SampleDocument, change_document
+from app.store.purging import purge
 from app.store.revisions import (
     Kept,
     Line,
     Summary,
-    add_revision,
-    find_revision,
+    add_sample,
     find_sample,
     kept_of,
     newest_child_of,
     parent_of,
+    point_at,
     refuse_stale,
+    save_revision,
     summary_of,
 )
+from app.store.search import split_words
 
 
 def new_identifier() -> str:
@@ -41,7 +44,7 @@ class Samples:
 
     def __init__(self, database: Database, identify: Callable[[], str] = new_identifier) -> None:
         self._database = database
-        self._identify = identify
+        self.identify = identify
 
     def create(self, document: SampleDocument) -> Kept:
         """Keep a new sample with ``document`` as its revision 1."""
@@ -55,16 +58,23 @@ class Samples:
                 return ()
             return tuple(self._add_sample(connection, document) for document in documents)
 
-    def list(self, *, archived: bool = False, deleted: bool = False) -> tuple[Summary, ...]:
-        """Return the samples, newest change first; archived and deleted ones only where asked for, too."""
+    def list(self, *, archived: bool = False, deleted: bool = False, text: str = "") -> tuple[Summary, ...]:
+        """Return the samples, newest change first; archived and deleted ones only where asked for, too.
+
+        With ``text`` only those in which every word of it is found, capitals or not: in the name, the tags, the notes,
+        the group or the names of the properties. Raises InputError where the text is too long.
+        """
+        words = split_words(text)
         with self._database.reading() as connection:
             rows = connection.execute(
-                "SELECT s.*, r.hash, r.json FROM sample s "
+                "SELECT s.*, r.hash, r.json, "
+                "s.deleted IS NOT NULL AND EXISTS (SELECT 1 FROM sheet WHERE sheet.sample_id = s.id) AS printed "
+                "FROM sample s "
                 "JOIN revision r ON r.sample_id = s.id AND r.number = s.revision "
                 "WHERE (? OR s.archived IS NULL) AND (? OR s.deleted IS NULL) ORDER BY s.changed DESC, s.rowid DESC",
                 (archived, deleted),
             ).fetchall()
-        return tuple(summary_of(row) for row in rows)
+        return tuple(found for row in rows if (found := summary_of(row, words)) is not None)
 
     def get(self, sample_id: str, revision: int | None = None) -> Kept:
         """Return the current revision, or the one with a given number. Raises NotFoundError."""
@@ -93,6 +103,16 @@ class Samples:
         with self._database.writing() as connection:
             sample = find_sample(connection, sample_id)
             return self._save(connection, sample, document, parent)
+
+    def restore(self, sample_id: str, revision: int, parent: int) -> Kept:
+        """Keep the document of an earlier (or undone) ``revision`` as a new revision, made from ``parent``.
+
+        Nothing is taken back: what stood in between stays in the history. Where the document is what stands now, no
+        revision is made. Raises NotFoundError where there is no such revision, and ConflictError as ``save`` does.
+        """
+        with self._database.writing() as connection:
+            sample = find_sample(connection, sample_id)
+            return self._save(connection, sample, kept_of(connection, sample, revision).document, parent)
 
     def rename(self, sample_id: str, name: str) -> Kept:
         """Give the sample a new name, as a new revision."""
@@ -125,29 +145,32 @@ class Samples:
         self._mark(sample_id, "archived", archived)
 
     def delete(self, sample_id: str) -> None:
-        """Mark the sample as deleted. Its revisions and sheets stay in the file, and ``recover`` brings it back."""
+        """Mark the sample as deleted. ``recover`` brings it back until ``purge`` removes it, thirty days later.
+
+        Deleting what is deleted changes nothing, so that the days are counted from the first time.
+        """
         self._mark(sample_id, "deleted", True)
 
     def recover(self, sample_id: str) -> None:
         """Take back ``delete``."""
         self._mark(sample_id, "deleted", False)
 
+    def purge(self, now: datetime | None = None) -> tuple[str, ...]:
+        """Remove for good what was deleted thirty days before ``now``, or longer; return the ids of what went.
+
+        Done at each opening of the file, too. A sample of which a sheet was printed stays (see ``purging.py``).
+        """
+        moment = self._database.moment() if now is None else now
+        with self._database.writing() as connection:
+            return purge(connection, moment)
+
     def _add_sample(self, connection: sqlite3.Connection, document: SampleDocument) -> Kept:
-        sample_id, now = self._identify(), self._database.now()
-        connection.execute(
-            "INSERT INTO sample (id, revision, created, changed) VALUES (?, 1, ?, ?)", (sample_id, now, now)
-        )
-        add_revision(connection, sample_id, 1, None, document, now)
+        sample_id = self.identify()
+        add_sample(connection, sample_id, document, self._database.now())
         return kept_of(connection, find_sample(connection, sample_id))
 
     def _save(self, connection: sqlite3.Connection, sample: sqlite3.Row, document: SampleDocument, parent: int) -> Kept:
-        if content_hash(document.plain()) == find_revision(connection, sample["id"], sample["revision"])["hash"]:
-            return kept_of(connection, sample)
-        refuse_stale(sample, parent)
-        newest = connection.execute("SELECT max(number) FROM revision WHERE sample_id = ?", (sample["id"],)).fetchone()
-        number = int(newest[0]) + 1
-        add_revision(connection, sample["id"], number, parent, document, self._database.now())
-        return self._point_at(connection, sample["id"], number)
+        return save_revision(connection, sample, document, parent, self._database.now())
 
     def _step(
         self,
@@ -163,17 +186,13 @@ class Samples:
             target = find_target(connection, sample_id, sample["revision"])
             if target is None:
                 raise InputError(nothing, hint="The sample stays as it is.")
-            return self._point_at(connection, sample_id, target)
-
-    def _point_at(self, connection: sqlite3.Connection, sample_id: str, number: int) -> Kept:
-        connection.execute(
-            "UPDATE sample SET revision = ?, changed = ? WHERE id = ?", (number, self._database.now(), sample_id)
-        )
-        return kept_of(connection, find_sample(connection, sample_id))
+            return point_at(connection, sample_id, target, self._database.now())
 
     def _mark(self, sample_id: str, column: str, marked: bool) -> None:
         with self._database.writing() as connection:
-            find_sample(connection, sample_id, deleted=column == "deleted")
-            connection.execute(
-                f"UPDATE sample SET {column} = ? WHERE id = ?", (self._database.now() if marked else None, sample_id)
-            )
+            sample = find_sample(connection, sample_id, deleted=column == "deleted")
+            if (sample[column] is not None) != marked:
+                connection.execute(
+                    f"UPDATE sample SET {column} = ? WHERE id = ?",
+                    (self._database.now() if marked else None, sample_id),
+                )

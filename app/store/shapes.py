@@ -6,7 +6,15 @@ import re
 from collections.abc import Callable, Mapping
 from typing import Annotated, Any, NoReturn
 
-from pydantic import AfterValidator, BaseModel, ConfigDict, Field, SerializerFunctionWrapHandler, model_serializer
+from pydantic import (
+    AfterValidator,
+    BaseModel,
+    ConfigDict,
+    Field,
+    SerializerFunctionWrapHandler,
+    WithJsonSchema,
+    model_serializer,
+)
 from pydantic_core import ErrorDetails, PydanticCustomError
 
 from app.errors import InputError, join_field
@@ -115,6 +123,22 @@ def _check_free(value: dict[str, float]) -> FrozenDict:
     return FrozenDict(value)
 
 
+_THREE_SCHEMA: dict[str, Any] = {"type": "array", "items": {"type": "number"}, "minItems": 3, "maxItems": 3}
+_DIRECTION_SCHEMA: dict[str, Any] = {
+    "description": _A_DIRECTION,
+    "anyOf": [
+        {"type": "string", "pattern": r"\S"},
+        _THREE_SCHEMA,
+        {"type": "object", "properties": {"xyz": _THREE_SCHEMA}, "required": ["xyz"]},
+        {"type": "object", "properties": {"specimen": _THREE_SCHEMA}, "required": ["specimen"]},
+    ],
+}
+_POSE_SCHEMA: dict[str, Any] = {
+    "description": _A_POSE,
+    "type": "object",
+    "oneOf": [{"required": [name]} for name in _POSES],
+}
+
 Number = Annotated[float, Field(strict=True, allow_inf_nan=False)]
 Positive = Annotated[Number, Field(gt=0)]
 Text = Annotated[str, Field(strict=True), AfterValidator(_kept_value)]
@@ -124,10 +148,10 @@ Six = tuple[Number, Number, Number, Number, Number, Number]
 Matrix = tuple[tuple[Number, ...], ...]
 NumberMap = Annotated[dict[Name, Number], AfterValidator(FrozenDict)]
 Free = Annotated[dict[str, Number], AfterValidator(_check_free)]
-Direction = Annotated[Any, AfterValidator(_check_direction)]
-Pose = Annotated[Any, AfterValidator(_check_pose)]
+Direction = Annotated[Any, AfterValidator(_check_direction), WithJsonSchema(_DIRECTION_SCHEMA)]
+Pose = Annotated[Any, AfterValidator(_check_pose), WithJsonSchema(_POSE_SCHEMA)]
 Json = Annotated[Any, AfterValidator(_kept_value)]
-JsonObject = Annotated[Any, AfterValidator(_check_object)]
+JsonObject = Annotated[Any, AfterValidator(_check_object), WithJsonSchema({"type": "object"})]
 
 IDENTITY = freeze({"matrix": [[1, 0, 0], [0, 1, 0], [0, 0, 1]]})
 """The pose in which the specimen frame is the crystal frame."""
@@ -156,6 +180,9 @@ _SENTENCES = {
     "extra_forbidden": "This field is not known.",
     "float_type": "A number is needed here.",
     "finite_number": "The number here must be finite.",
+    "int_type": "A whole number is needed here.",
+    "bool_type": "True or false is needed here.",
+    "less_than_equal": "The number here must be at most {le:g}.",
     "greater_than": "The number here must be more than {gt:g}.",
     "greater_than_equal": "The number here must be at least {ge:g}.",
     "string_type": "Text is needed here.",
@@ -165,6 +192,7 @@ _SENTENCES = {
     "string_pattern_mismatch": "This must not be empty.",
     "tuple_type": "A list is needed here.",
     "too_long": "This list has more than {max_length} entries.",
+    "too_short": "This list has fewer than {min_length} entries.",
     "dict_type": "An object with named values is needed here.",
     "model_type": "An object with named values is needed here.",
     "model_attributes_type": "An object with named values is needed here.",

@@ -18,6 +18,7 @@ from app.web import (
     cut_page,
     error_answers,
     error_page,
+    exchange,
     frame_question,
     glossary_page,
     guide,
@@ -94,6 +95,7 @@ def create_app(data_dir: Path | None = None, access: Access | None = None) -> Fa
     app.include_router(glossary_page.router)
     app.include_router(api_page.router)
     app.include_router(samples.router)
+    app.include_router(exchange.router)
     app.include_router(tensor_page.router)
     app.include_router(live.router)
     app.include_router(readings_page.router)

@@ -80,6 +80,16 @@ ROWS: Final = [
     {"cells": {"kind": "rod", "direction": "[0 0 1]", "value": "15.61", "sigma": "0.12", "unit": "W/(m·K)"}},
     {"cells": {"kind": "along", "direction": "(0 0 1)", "value": "16.74(12)"}, "set_aside": "chipped", "pose": TURNED},
 ]  # fmt: skip
+DOCUMENT: Final = {
+    "format": "halfturn",
+    "version": 2,
+    "samples": [
+        {"document": {"name": "Invented", "tags": ["a"], "crystal": MONOCLINIC, "readings": [], "later": [1, {"b": None}]}},
+        {"id": "0a1b2c3d4e5f", "revision": 4, "document": {"name": "Second", "crystal": {"cell": None, "group": "∞m"}},
+         "history": [{"number": 4, "created": "2031-05-04T12:00:00.000000Z", "document": {"name": "Second", "crystal": {"cell": None, "group": "∞m"}}}]},
+    ],
+    "stages": [{"id": "bench", "name": "Bench", "axes": STAGE, "sight": [0, 0, 1], "blade": [1, 0, 0]}],
+}  # fmt: skip
 
 
 def _edit(**change: Any) -> dict[str, Any]:
@@ -190,6 +200,11 @@ SEEDS: Final[dict[str, list[Any]]] = {
     "POST /api/samples/{sample_id}/redo": [{"parent": "$revision"}],
     "POST /api/samples/{sample_id}/rename": [{"name": "Another name"}],
     "POST /api/samples/{sample_id}/mark": [{"archived": True}, {"archived": False, "deleted": False}],
+    "POST /api/import/plan": [{"document": DOCUMENT}, {"text": TABLE, "crystal": MONOCLINIC, "property": "thermal_conductivity"}],
+    "POST /api/import": [
+        {"document": DOCUMENT, "choices": [{"do": "skip"}, None], "stages": "keep"},
+        {"text": CIF, "name": "From a CIF", "choices": [{"do": "add"}]},
+    ],
     "POST /api/samples/{sample_id}/readings": [{"parent": "$revision", "rows": ROWS, "batches": {"f": "0.01"}}],
     "POST /api/samples/{sample_id}/readings/table": [{"parent": "$revision", "text": TABLE}],
     "POST /api/samples/{sample_id}/readings/closer": [None],

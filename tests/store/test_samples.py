@@ -148,7 +148,7 @@ def test_the_list_has_the_newest_change_first_and_what_a_picture_needs(store: St
         (9.83, 6.41, 7.27, 90, 107.4, 90),
         2,
     )
-    assert top.time == "2031-05-04T12:03:00.000000Z"
+    assert top.time == "2031-05-04T12:02:00.000000Z"
     assert top.crystal["frame"] == "x3=c x2=b*"
     assert top.property is not None
     assert top.property["tensor"]["free"] == {"11": 13.2, "13": 1.85, "22": 24.6, "33": 15.9}
